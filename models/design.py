@@ -1,0 +1,78 @@
+"""Regression columns put on one scale, and those that others already contain set aside."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from steelyard.datasets.arrays import Floats, Integers
+
+__all__ = ["ScaledDesign", "scaled_design"]
+
+ALIAS_LIMIT = 1e-9
+
+
+@dataclass(frozen=True, eq=False)
+class ScaledDesign:
+    """Columns of mean 0 and spread 1 (the constant apart) that span what the original columns span.
+
+    Attributes
+    ----------
+    matrix : (n, r) scaled columns that are kept
+    kept : (r,) their positions among the k original columns
+    back : (k, r) so that original coefficients = back @ scaled coefficients, 0 for columns set aside
+    """
+
+    matrix: Floats
+    kept: Integers
+    back: Floats
+
+    @property
+    def aliased(self) -> tuple[int, ...]:
+        """Positions of the original columns that earlier columns already contain."""
+        return tuple(sorted(set(range(self.back.shape[0])) - set(self.kept.tolist())))
+
+
+def scaled_design(design: Floats) -> ScaledDesign:
+    """Scale an (n, k) design; columns are centred only when the first is the constant 1.
+
+    A column is set aside when less than 1e-9 of its length is left after the columns before it are taken
+    out, so the order of covariates decides which of two equal ones is estimated.
+    """
+    n, k = design.shape
+    has_constant = k > 0 and bool((design[:, 0] == 1.0).all())
+    centre = np.zeros(k)
+    if has_constant:
+        centre[1:] = design[:, 1:].mean(axis=0)
+    matrix = design - centre
+    spread = np.sqrt((matrix**2).mean(axis=0)) if n else np.zeros(k)
+    # A constant column centred leaves rounding noise; judge it against its own level.
+    negligible = spread <= 1e-12 * np.maximum(np.abs(centre), 1e-300)
+    scale = np.where(negligible, 1.0, spread)
+    matrix /= scale
+    matrix[:, negligible] = 0.0
+    kept = _independent(matrix)
+    back = np.zeros((k, len(kept)))
+    back[kept, np.arange(len(kept))] = 1.0 / scale[kept]
+    if has_constant:
+        back[0] -= centre[kept] / scale[kept]
+    return ScaledDesign(np.asfortranarray(matrix[:, kept]), kept, back)
+
+
+def _independent(matrix: Floats) -> Integers:
+    """Positions of the columns that are not combinations of earlier ones."""
+    n, k = matrix.shape
+    basis = np.empty((n, 0))
+    kept: list[int] = []
+    for column in range(k):
+        vector = matrix[:, column]
+        length = float(np.linalg.norm(vector))
+        # Two passes of projection, since one loses accuracy on nearly dependent columns.
+        rest = vector - basis @ (basis.T @ vector)
+        rest -= basis @ (basis.T @ rest)
+        left = float(np.linalg.norm(rest))
+        if length > 0 and left > ALIAS_LIMIT * length:
+            kept.append(column)
+            basis = np.column_stack([basis, rest / left])
+    return np.array(kept, dtype=np.int64)

@@ -1,0 +1,1 @@
+"""Econometric models: regressions of counts, amounts and links."""

@@ -1,0 +1,105 @@
+"""Negative-binomial regression of counts on all dyads, quadratic variance (form 2)."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import ClassVar
+
+import numpy as np
+
+from steelyard.datasets import Dyads, Floats
+from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
+from steelyard.models.covariance import NodePairs
+from steelyard.models.distributions import DispersionForm, NegativeBinomialLaw
+from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
+from steelyard.models.index_likelihood import IndexFit, fit_indices
+from steelyard.models.likelihoods import NegativeBinomialQuadratic, Poisson
+from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
+from steelyard.models.measure import Measure
+
+__all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
+
+
+@dataclass(frozen=True)
+class FittedNegativeBinomial:
+    """Mean exp(index) and variance mean + alpha mean^2 on every dyad."""
+
+    index: LinearIndex
+    alpha: float
+    estimates: Estimates
+    n_parameters: int
+    convergence: Convergence
+    measure: ClassVar[Measure] = Measure.COUNTS
+
+    def expected_weight(self, dyads: Dyads, /) -> Floats:
+        return np.exp(self.index.on(dyads))
+
+    def distribution(self, dyads: Dyads, /) -> NegativeBinomialLaw:
+        return NegativeBinomialLaw(self.expected_weight(dyads), self.alpha, DispersionForm.QUADRATIC)
+
+
+def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | None = None) -> IndexFit:
+    """Fit plain arrays; the second index is the constant log alpha.
+
+    Where the counts vary less than Poisson counts would, the likelihood only rises as alpha falls to 0: then
+    the Poisson fit is the maximum, and it comes back with one index instead of two.
+    """
+    poisson = fit_indices(Poisson(response), [design], pairs)
+    mean = np.exp(design @ poisson.coefficients[0])
+    mean[poisson.separated] = 0.0
+    # Slope of the log-likelihood in alpha at alpha = 0, times two.
+    if float(np.sum((response - mean) ** 2 - response)) <= 0.0:
+        return poisson
+    return fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
+
+
+@dataclass(frozen=True)
+class NegativeBinomialModel:
+    """Counts with log-linear mean and variance mean + alpha mean^2, zeros included.
+
+    Parameters
+    ----------
+    covariates : names of the covariates that enter the log of the mean beside a constant
+    """
+
+    covariates: tuple[str, ...]
+
+    name: ClassVar[str] = "negative_binomial"
+    family: ClassVar[Family] = Family.ECONOMETRIC
+    part: ClassVar[Part] = Part.JOINT
+    measure: ClassVar[Measure] = Measure.COUNTS
+    holdouts: ClassVar[frozenset[Holdout]] = frozenset(Holdout)
+    directed: ClassVar[frozenset[bool]] = frozenset({True, False})
+    information: ClassVar[Information] = Information.COVARIATES
+    requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
+    summary: ClassVar[str] = (
+        "Counts on every dyad, zeros included, are Poisson around a mean that itself varies (gamma) from dyad "
+        "to dyad, so the variance grows with the square of the mean."
+    )
+    formula: ClassVar[str] = "mean m, variance m + alpha m^2,  log m = constant + sum of slope x covariate"
+    parameters: ClassVar[str] = "maximum likelihood; covariates + 1, and alpha unless it is at its edge 0"
+    caution: ClassVar[str] = (
+        "Its estimates depend on the unit of the flows. One alpha serves both the zeros and the spread of the "
+        "weights, so a good fit of one may be paid for in the other."
+    )
+    sources: ClassVar[str] = "Cameron & Trivedi (1998); Bosquet & Boulhol (2014) on the unit"
+
+    def fit(self, dyads: Dyads, /) -> FittedNegativeBinomial:
+        """Maximum likelihood on all of these dyads, zeros included."""
+        found = fit_negative_binomial(dyads.counts, dyads.design(self.covariates), node_pairs(dyads))
+        slopes = index_estimates(found, self.covariates, EstimatePart.JOINT)
+        convergence = found.convergence
+        if len(found.coefficients) == 1:
+            note = "no overdispersion: the maximum is the Poisson law"
+            alpha = Estimate(EstimatePart.DISPERSION, "alpha", 0.0, {}, Status.BOUNDARY, True, note)
+            said = "; ".join(m for m in (convergence.message, "alpha at its edge 0") if m)
+            convergence = replace(convergence, message=said)
+        else:
+            alpha = scale_estimate(found, 1, "alpha", EstimatePart.DISPERSION)
+        return FittedNegativeBinomial(
+            index=LinearIndex.of(found, self.covariates),
+            alpha=alpha.value,
+            estimates=slopes + Estimates((alpha,)),
+            n_parameters=found.rank,
+            convergence=convergence,
+        )

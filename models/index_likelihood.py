@@ -1,0 +1,258 @@
+"""Likelihoods in which each observation depends on the coefficients through one or more linear indices.
+
+This is the estimation core: plain arrays in, estimates out. Poisson has one index (log mean); the negative
+binomial has two (log mean, and log dispersion with a constant for its only column); and so on.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Protocol, Self
+
+import numpy as np
+from scipy.linalg import block_diag
+
+from steelyard.datasets.arrays import Bools, Floats
+from steelyard.models.contract import Convergence
+from steelyard.models.covariance import Covariances, NodePairs, covariances
+from steelyard.models.design import ScaledDesign, scaled_design
+from steelyard.models.errors import ModelError
+from steelyard.models.estimates import ErrorKind
+from steelyard.models.separation import MOVES, separating_direction
+from steelyard.models.solvers import Slope, newton_maximise
+
+__all__ = ["Edges", "IndexDerivatives", "IndexFit", "IndexLikelihood", "fit_indices"]
+
+
+@dataclass(frozen=True, eq=False)
+class Edges:
+    """(n,) which observations sit at the lower or the upper edge of what the first index can explain."""
+
+    lower: Bools
+    upper: Bools
+
+
+@dataclass(frozen=True, eq=False)
+class IndexDerivatives:
+    """Per observation: first (m, n) and second (m, m, n) derivatives with respect to the m indices."""
+
+    first: Floats
+    second: Floats
+
+
+class IndexLikelihood(Protocol):
+    """The log-likelihood of a fixed response as a function of m indices."""
+
+    @property
+    def edges(self) -> Edges:
+        """Which observations could drive the first index to infinity."""
+
+    def restricted(self, keep: Bools, /) -> Self:
+        """The same for some of the observations."""
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        """Coefficients, index after index, at which the likelihood is finite."""
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        """Sum over observations, up to a constant that depends on the response alone."""
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        """Derivatives with respect to the indices."""
+
+
+@dataclass(frozen=True, eq=False)
+class IndexFit:
+    """A fitted index likelihood.
+
+    Attributes
+    ----------
+    coefficients : for each index, (k,) on the original columns; 0 for columns set aside
+    covariances : over all coefficients, index after index; nan rows for columns set aside
+    repaired : kinds of covariance that had to be made positive semidefinite
+    aliased : for each index, positions of columns that earlier ones contain
+    directions : (k,) directions of the first index's coefficients along which the likelihood has no maximum,
+        in the order in which their observations were set aside
+    separated : (n,) observations fixed at their limit
+    rank : number of identified finite coefficients
+    convergence : the certificate, its message naming all of the above
+    """
+
+    coefficients: tuple[Floats, ...]
+    covariances: Mapping[ErrorKind, Floats]
+    repaired: frozenset[ErrorKind]
+    aliased: tuple[tuple[int, ...], ...]
+    directions: tuple[Floats, ...]
+    separated: Bools
+    rank: int
+    convergence: Convergence
+
+
+def fit_indices(
+    likelihood: IndexLikelihood, designs: Sequence[Floats], pairs: NodePairs | None = None
+) -> IndexFit:
+    """Maximise an index likelihood.
+
+    Parameters
+    ----------
+    likelihood : of n observations and m indices
+    designs : m arrays (n, k); the first column is the constant 1 where the index has one
+    pairs : nodes of each observation, for node-clustered covariance
+
+    Returns
+    -------
+    IndexFit. Columns that earlier ones contain are set aside. Observations that separate the data are taken
+    out along an exact direction, and the rest is fitted; both are counted in the message.
+
+    Raises
+    ------
+    ModelError : there is nothing left to fit
+    """
+    n = len(designs[0])
+    keep = np.ones(n, dtype=bool)
+    directions: list[Floats] = []
+    while True:
+        kept_likelihood = likelihood.restricted(keep) if directions else likelihood
+        scaled = [scaled_design(d[keep]) for d in designs]
+        _refuse_too_few(int(keep.sum()), scaled)
+        direction = _surely_separating(kept_likelihood, scaled[0])
+        if direction is None:
+            objective = _Indices(kept_likelihood, scaled)
+            maximum = newton_maximise(objective, kept_likelihood.start(objective.matrices))
+            edges = kept_likelihood.edges
+            if not maximum.moving:
+                break
+            direction = separating_direction(scaled[0].matrix, edges.lower, edges.upper)
+            if direction is None:
+                break
+        original = scaled[0].back @ direction
+        moved = np.abs(scaled[0].matrix @ direction) > MOVES
+        keep[np.flatnonzero(keep)[moved]] = False
+        directions.append(original)
+        if not keep.any():
+            return _all_separated(designs, directions)
+    scores = objective.scores(maximum.point)
+    some_pairs = None if pairs is None else _kept_pairs(pairs, keep)
+    found = covariances(maximum.information, scores, some_pairs) if maximum.convergence.converged else None
+    return _assembled(scaled, maximum.point, found, directions, ~keep, maximum.convergence)
+
+
+def _surely_separating(likelihood: IndexLikelihood, design: ScaledDesign) -> Floats | None:
+    """Look before fitting where that is cheap: when most columns are pinned by observations inside their range.
+
+    Without any such observation (a logit) the question is a large linear programme; there Newton's steps, which
+    never shrink under separation, say whether it needs to be asked.
+    """
+    edges = likelihood.edges
+    if (edges.lower | edges.upper).all():
+        return None
+    return separating_direction(design.matrix, edges.lower, edges.upper)
+
+
+def _refuse_too_few(n: int, scaled: Sequence[ScaledDesign]) -> None:
+    rank = sum(len(s.kept) for s in scaled)
+    if n <= rank:
+        raise ModelError(
+            f"{n} observations cannot identify {rank} coefficients; use fewer covariates or more dyads"
+        )
+
+
+def _kept_pairs(pairs: NodePairs, keep: Bools) -> NodePairs:
+    return NodePairs(pairs.origin[keep], pairs.destination[keep], pairs.n_nodes)
+
+
+@dataclass(frozen=True, eq=False)
+class _Indices:
+    """The likelihood as a function of all scaled coefficients, index after index."""
+
+    likelihood: IndexLikelihood
+    scaled: Sequence[ScaledDesign]
+
+    @property
+    def matrices(self) -> list[Floats]:
+        return [s.matrix for s in self.scaled]
+
+    def _split(self, point: Floats) -> list[Floats]:
+        ends = np.cumsum([m.shape[1] for m in self.matrices])[:-1]
+        return np.split(point, ends)
+
+    def _indices(self, point: Floats) -> list[Floats]:
+        return [m @ part for m, part in zip(self.matrices, self._split(point), strict=True)]
+
+    def value(self, point: Floats) -> float:
+        with np.errstate(over="ignore", invalid="ignore"):
+            return self.likelihood.value(self._indices(point))
+
+    def movement(self, step: Floats) -> float:
+        return max(float(np.abs(change).max(initial=0.0)) for change in self._indices(step))
+
+    def scores(self, point: Floats) -> Floats:
+        first = self.likelihood.derivatives(self._indices(point)).first
+        return np.column_stack([f[:, None] * m for f, m in zip(first, self.matrices, strict=True)])
+
+    def slope(self, point: Floats) -> Slope:
+        matrices = self.matrices
+        with np.errstate(over="ignore", invalid="ignore"):
+            found = self.likelihood.derivatives(self._indices(point))
+            gradient = np.concatenate([m.T @ f for m, f in zip(matrices, found.first, strict=True)])
+            sizes = zip(matrices, found.first, strict=True)
+            scale = np.concatenate([np.abs(m).T @ np.abs(f) for m, f in sizes])
+            rows = [
+                np.hstack([-(a.T * found.second[i, j]) @ b for j, b in enumerate(matrices)])
+                for i, a in enumerate(matrices)
+            ]
+        return Slope(gradient, np.vstack(rows), scale)
+
+
+def _assembled(
+    scaled: Sequence[ScaledDesign],
+    point: Floats,
+    found: Covariances | None,
+    directions: Sequence[Floats],
+    separated: Bools,
+    convergence: Convergence,
+) -> IndexFit:
+    """Back to original columns."""
+    back = block_diag(*[s.back for s in scaled])
+    set_aside = (back == 0).all(axis=1)
+    by_kind: dict[ErrorKind, Floats] = {}
+    for kind, matrix in (found.by_kind if found else {}).items():
+        full = back @ matrix @ back.T
+        full[set_aside, :] = np.nan
+        full[:, set_aside] = np.nan
+        by_kind[kind] = full
+    ends = np.cumsum([s.back.shape[0] for s in scaled])[:-1]
+    return IndexFit(
+        coefficients=tuple(np.split(back @ point, ends)),
+        covariances=by_kind,
+        repaired=found.repaired if found else frozenset(),
+        aliased=tuple(s.aliased for s in scaled),
+        directions=tuple(directions),
+        separated=separated,
+        rank=len(point),
+        convergence=_with_separation(convergence, int(separated.sum())),
+    )
+
+
+def _all_separated(designs: Sequence[Floats], directions: Sequence[Floats]) -> IndexFit:
+    """Every observation sits at its limit: no finite coefficient is left, and nothing remains to be fitted."""
+    n, columns = len(designs[0]), [d.shape[1] for d in designs]
+    message = f"all {n} dyads separated and fixed at their limit"
+    return IndexFit(
+        coefficients=tuple(np.zeros(k) for k in columns),
+        covariances={},
+        repaired=frozenset(),
+        aliased=tuple(() for _ in columns),
+        directions=tuple(directions),
+        separated=np.ones(n, dtype=bool),
+        rank=0,
+        convergence=Convergence(True, 0, 0.0, message),
+    )
+
+
+def _with_separation(convergence: Convergence, n_separated: int) -> Convergence:
+    if not n_separated:
+        return convergence
+    said = f"{n_separated} separated dyads fixed at their limit"
+    message = f"{convergence.message}; {said}" if convergence.message else said
+    return Convergence(convergence.converged, convergence.iterations, convergence.residual, message)

@@ -1,0 +1,216 @@
+"""The one-index and two-index likelihoods: Poisson, logit, geometric excess, negative binomial, lognormal."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from scipy.special import digamma, expit, polygamma, xlogy
+
+from steelyard.datasets.arrays import Bools, Floats, Integers
+from steelyard.models.index_likelihood import Edges, IndexDerivatives
+from steelyard.models.special import negative_binomial_log_mass
+
+__all__ = [
+    "GeometricExcess",
+    "LogNormal",
+    "Logit",
+    "NegativeBinomialQuadratic",
+    "Poisson",
+    "least_squares",
+]
+
+
+def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
+    """(k,) coefficients of a (weighted) least-squares fit; used for starts and for the lognormal."""
+    root = np.ones(len(values)) if weights is None else np.sqrt(weights)
+    return np.asarray(np.linalg.lstsq(design * root[:, None], values * root, rcond=None)[0])
+
+
+def _one_index(first: Floats, second: Floats) -> IndexDerivatives:
+    return IndexDerivatives(first[None, :], second[None, None, :])
+
+
+@dataclass(frozen=True, eq=False)
+class Poisson:
+    """Counts (or any amounts >= 0, as a pseudo-likelihood) with mean exp(index)."""
+
+    response: Floats
+
+    @property
+    def edges(self) -> Edges:
+        return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
+
+    def restricted(self, keep: Bools, /) -> Poisson:
+        return Poisson(self.response[keep])
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        """Two reweighted least-squares steps from means half-way between data and average."""
+        mean = 0.5 * (self.response + max(float(self.response.mean()), 1e-300))
+        return least_squares(designs[0], np.log(mean) + (self.response - mean) / mean, mean)
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        index = indices[0]
+        return float(np.sum(self.response * (index - self._log_response) + self.response - np.exp(index)))
+
+    @cached_property
+    def _log_response(self) -> Floats:
+        return np.log(np.where(self.response > 0, self.response, 1.0))
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        mean = np.exp(indices[0])
+        return _one_index(self.response - mean, -mean)
+
+
+@dataclass(frozen=True, eq=False)
+class Logit:
+    """Links 0 or 1 with log odds equal to the index."""
+
+    response: Floats
+
+    @property
+    def edges(self) -> Edges:
+        return Edges(self.response == 0, self.response == 1)
+
+    def restricted(self, keep: Bools, /) -> Logit:
+        return Logit(self.response[keep])
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        """The least-squares fit of log odds shrunk to a quarter of the way."""
+        share = np.clip(0.25 * self.response + 0.75 * self.response.mean(), 1e-12, 1 - 1e-12)
+        return least_squares(designs[0], np.log(share) - np.log1p(-share))
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        # Log probability of what was seen, without cancellation at either end.
+        signed = np.where(self.response == 1, indices[0], -indices[0])
+        return float(-np.sum(np.logaddexp(0.0, -signed)))
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        probability = expit(indices[0])
+        return _one_index(self.response - probability, -probability * expit(-indices[0]))
+
+
+@dataclass(frozen=True, eq=False)
+class GeometricExcess:
+    """Counts >= 1 whose excess over 1 is geometric with mean exp(index)."""
+
+    response: Floats
+
+    @property
+    def edges(self) -> Edges:
+        return Edges(self.response == 1, np.zeros(len(self.response), dtype=bool))
+
+    def restricted(self, keep: Bools, /) -> GeometricExcess:
+        return GeometricExcess(self.response[keep])
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        return least_squares(designs[0], np.log(self.response - 0.5))
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        index = indices[0]
+        # (w - 1) log y + log(1 - y), each logarithm without cancellation.
+        return float(-np.sum((self.response - 1) * np.logaddexp(0, -index) + np.logaddexp(0, index)))
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        y, rest = expit(indices[0]), expit(-indices[0])
+        return _one_index((self.response - 1) * rest - y, -self.response * y * rest)
+
+
+@dataclass(frozen=True, eq=False)
+class NegativeBinomialQuadratic:
+    """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
+
+    response: Floats
+
+    @property
+    def edges(self) -> Edges:
+        return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
+
+    def restricted(self, keep: Bools, /) -> NegativeBinomialQuadratic:
+        return NegativeBinomialQuadratic(self.response[keep])
+
+    @cached_property
+    def _distinct(self) -> tuple[Floats, Integers, Floats]:
+        """Distinct responses, where each observation's stands among them, and how often each occurs."""
+        values, inverse, counts = np.unique(self.response, return_inverse=True, return_counts=True)
+        return values, inverse, counts.astype(np.float64)
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply."""
+        logs = np.log(self.response + 0.5 * min(1.0, max(float(self.response.mean()), 1e-300)))
+        coefficients = least_squares(designs[0], logs)
+        index = designs[0] @ coefficients
+        index += np.log(max(float(self.response.mean()), 1e-300)) - np.log(np.exp(index).mean())
+        mean = np.exp(index)
+        alpha = float(np.mean(((self.response - mean) ** 2 - self.response) / mean**2))
+        coefficients = least_squares(designs[0], index)
+        return np.append(coefficients, np.log(np.clip(alpha, 0.05, 20.0)))
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        index, size = indices[0], np.exp(-indices[1][0])
+        values, _, counts = self._distinct
+        # At mean = w the mass has no deviance part, so what depends on w alone is found without cancellation.
+        alone = negative_binomial_log_mass(values, values, size)
+        alone = (
+            alone
+            + xlogy(values, 1.0 + size / np.where(values > 0, values, 1.0))
+            + size * np.log1p(values / size)
+        )
+        log_ratio = index - np.log(size)
+        shared = self.response * np.logaddexp(0, -log_ratio) + size * np.logaddexp(0, log_ratio)
+        return float(counts @ alone - shared.sum())
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        w, mean, r = self.response, np.exp(indices[0]), float(np.exp(-indices[1][0]))
+        values, inverse, _ = self._distinct
+        psi = (digamma(values + r) - digamma(r))[inverse]
+        psi_1 = (polygamma(1, values + r) - polygamma(1, r))[inverse]
+        total = r + mean
+        by_size = psi - np.log1p(mean / r) + (mean - w) / total
+        by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
+        first = np.stack([r * (w - mean) / total, -r * by_size])
+        second = np.empty((2, 2, len(w)))
+        second[0, 0] = -mean * r * (r + w) / total**2
+        second[0, 1] = second[1, 0] = -r * mean * (w - mean) / total**2
+        second[1, 1] = r * by_size + r**2 * by_size_2
+        return IndexDerivatives(first, second)
+
+
+@dataclass(frozen=True, eq=False)
+class LogNormal:
+    """Positive amounts whose log is normal with mean index 1 and log standard deviation index 2."""
+
+    response: Floats
+
+    @property
+    def edges(self) -> Edges:
+        none = np.zeros(len(self.response), dtype=bool)
+        return Edges(none, none)
+
+    def restricted(self, keep: Bools, /) -> LogNormal:
+        return LogNormal(self.response[keep])
+
+    @cached_property
+    def _log_response(self) -> Floats:
+        return np.log(self.response)
+
+    def start(self, designs: Sequence[Floats], /) -> Floats:
+        """The maximum itself: least squares, and the root mean squared residual."""
+        coefficients = least_squares(designs[0], self._log_response)
+        residual = self._log_response - designs[0] @ coefficients
+        return np.append(coefficients, 0.5 * np.log(np.mean(residual**2)))
+
+    def value(self, indices: Sequence[Floats], /) -> float:
+        z = (self._log_response - indices[0]) * np.exp(-indices[1])
+        return float(-np.sum(indices[1] + 0.5 * z**2))
+
+    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
+        precision = np.exp(-indices[1])
+        z = (self._log_response - indices[0]) * precision
+        second = np.empty((2, 2, len(z)))
+        second[0, 0] = -(precision**2)
+        second[0, 1] = second[1, 0] = -2 * z * precision
+        second[1, 1] = -2 * z**2
+        return IndexDerivatives(np.stack([z * precision, z**2 - 1.0]), second)

@@ -1,0 +1,97 @@
+"""From a fitted index likelihood to what a model reports and predicts with."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from math import exp, inf
+
+import numpy as np
+
+from steelyard.datasets import Dyads, Floats
+from steelyard.models.covariance import NodePairs
+from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estimates, Status
+from steelyard.models.index_likelihood import IndexFit
+
+__all__ = ["LinearIndex", "index_estimates", "node_pairs", "scale_estimate"]
+
+CONSTANT = "constant"
+
+
+def node_pairs(dyads: Dyads) -> NodePairs:
+    """The ends of dyads, for node-clustered covariance."""
+    return NodePairs(dyads.origin, dyads.destination, dyads.n_nodes)
+
+
+@dataclass(frozen=True)
+class LinearIndex:
+    """constant + covariates x slopes on any dyads; infinite where a separated direction decides.
+
+    Attributes
+    ----------
+    covariates : names, in the order of `coefficients` after the constant
+    coefficients : (1 + k,) finite parts
+    directions : (1 + k,) each; the first that moves a dyad sends its index to + or - infinity
+    """
+
+    covariates: tuple[str, ...]
+    coefficients: tuple[float, ...]
+    directions: tuple[tuple[float, ...], ...] = ()
+
+    @classmethod
+    def of(cls, fit: IndexFit, covariates: Sequence[str]) -> LinearIndex:
+        """The first index of a fit."""
+        directions = tuple(tuple(d.tolist()) for d in fit.directions)
+        return cls(tuple(covariates), tuple(fit.coefficients[0].tolist()), directions)
+
+    def on(self, dyads: Dyads) -> Floats:
+        """(n,) values of the index."""
+        design = dyads.design(self.covariates)
+        index = np.asarray(design @ np.array(self.coefficients))
+        decided = np.zeros(len(index), dtype=bool)
+        for direction in self.directions:
+            along = np.array(direction)
+            move = design @ along
+            tolerance = 1e-7 * (np.abs(design) @ np.abs(along))
+            hit = ~decided & (np.abs(move) > tolerance)
+            index[hit] = np.sign(move[hit]) * inf
+            decided |= hit
+        return index
+
+
+def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart) -> Estimates:
+    """Rows for the constant and slopes of the first index."""
+    names = (CONSTANT, *covariates)
+    rows = []
+    for position, name in enumerate(names):
+        along = next((d[position] for d in fit.directions if abs(d[position]) > 1e-9), 0.0)
+        if along:
+            note = "no finite estimate: the data are separated along it"
+            rows.append(Estimate(part, name, inf if along > 0 else -inf, {}, Status.BOUNDARY, note=note))
+        elif position in fit.aliased[0]:
+            note = "set aside: the terms before it already contain it"
+            rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
+        else:
+            value = float(fit.coefficients[0][position])
+            errors = _errors(fit, position, 1.0)
+            rows.append(Estimate(part, name, value, errors, note=_repair_note(fit)))
+    return Estimates(tuple(rows))
+
+
+def scale_estimate(fit: IndexFit, index: int, name: str, part: EstimatePart) -> Estimate:
+    """The row of a scale exp(constant) that is an index of its own; standard errors by the delta method."""
+    position = sum(len(c) for c in fit.coefficients[:index])
+    value = exp(float(fit.coefficients[index][0]))
+    return Estimate(part, name, value, _errors(fit, position, value), positive=True, note=_repair_note(fit))
+
+
+def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, float]:
+    return {
+        kind: factor * float(np.sqrt(matrix[position, position])) for kind, matrix in fit.covariances.items()
+    }
+
+
+def _repair_note(fit: IndexFit) -> str:
+    return (
+        "" if not fit.repaired else "node-clustered variance repaired: negative eigenvalues clipped to zero"
+    )
