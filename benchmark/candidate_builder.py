@@ -136,7 +136,8 @@ def _covariate_names(model: str, need: Need, given: object, names: _Names) -> tu
         if given not in names.specifications:
             hint = suggestion(given, names.specifications)
             raise StudyError(f"there is no specification '{given}'; {hint}")
-        given = names.specifications[given]
+        # A specification's own names are checked once, where it is defined.
+        return tuple(names.specifications[given])
     if not isinstance(given, list) or not all(isinstance(c, str) for c in given):
         raise StudyError(f"covariates must be a specification's name or a list of names; got {given!r}")
     for covariate in given:

@@ -37,16 +37,13 @@ def data_facts(network: FlowNetwork) -> tuple[tuple[str, str], ...]:
         ("places", f"{network.n_nodes:,}"),
         ("dyads", f"{dyads:,} {'ordered' if network.directed else 'unordered'} pairs"),
         ("links", f"{links:,} ({100 * links / dyads:.1f} % of dyads; {dyads - links:,} zeros)"),
-        (
-            "total flow",
-            f"{network.total:,.6g} {amount}" if amount != "not stated" else f"{network.total:,.6g}",
-        ),
+        ("total flow", _amount(network.total) + ("" if amount == "not stated" else f" {amount}")),
     ]
     if network.directed and links:
         facts.append(("reciprocated links", f"{100 * _reciprocity(network):.1f} %"))
     if links:
         positive = network.flows.data
-        facts.append(("flow on a link", f"{positive.min():,.6g} to {positive.max():,.6g}"))
+        facts.append(("flow on a link", f"{_amount(positive.min())} to {_amount(positive.max())}"))
     if network.unit != 1.0:
         below = int((network.flows.data < network.unit / 2).sum())
         facts.append(("unit", f"{network.unit:g}; {below:,} links below half a unit are counted as 1"))
@@ -54,8 +51,13 @@ def data_facts(network: FlowNetwork) -> tuple[tuple[str, str], ...]:
     return tuple(facts)
 
 
+def _amount(value: float) -> str:
+    """Whole amounts with thousands separators, others with six digits."""
+    return f"{value:,.0f}" if float(value).is_integer() and abs(value) < 1e15 else f"{value:,.6g}"
+
+
 def _reciprocity(network: FlowNetwork) -> float:
-    links = network.flows.astype(bool).astype(np.int8)
+    links = network.flows.astype(bool).astype(np.int64)
     return float(links.multiply(links.T).sum() / links.sum())
 
 
