@@ -59,8 +59,7 @@ class DataSet:
         ------
         DataError : there is no such period
         """
-        if period is None and self.periods:
-            period = self.periods[-1]
+        period = (self.periods[-1] if self.periods else None) if period is None else str(period)
         if period is not None and period not in self.periods:
             known = ", ".join(self.periods) or "none, so leave period out"
             raise DataError(f"data set '{self.name}' has no period '{period}'; it holds {known}")

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import replace
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 
-from steelyard.datasets.arrays import Bools, Floats, Integers
+from steelyard.datasets.arrays import Bools, Floats, Integers, read_only
 from steelyard.datasets.covariates import Covariate, CovariateColumn, covariate_columns
 from steelyard.datasets.errors import CovariateError, DataError, suggestion
 from steelyard.datasets.flows import FlowNetwork, NodeColumn
@@ -22,7 +24,7 @@ class Dyads:
     A view: the network's arrays are shared, and the arrays below are made when first asked for, for this
     view's dyads only. Flows of dyads outside the view cannot be reached through it, so a model that is fitted
     on training dyads cannot look at the others. Undirected: each pair is one dyad, with origin < destination
-    in node order.
+    in node order. Arrays that the view keeps are read-only. What is cached stays behind when a view is pickled.
 
     Parameters
     ----------
@@ -34,7 +36,7 @@ class Dyads:
     Raises
     ------
     CovariateError : a covariate cannot be worked out
-    DataError : the mask has another shape than the network
+    DataError : the mask has another shape than the network, or does not hold booleans
     """
 
     def __init__(
@@ -43,12 +45,26 @@ class Dyads:
         covariates: Mapping[str, Covariate] | None = None,
         mask: Bools | None = None,
     ) -> None:
-        self._network = network
         self._columns: Mapping[str, CovariateColumn] = covariate_columns(covariates or {}, network)
-        self._mask = mask
+        # The covariates are worked out; the matrices they came from need not travel with every view.
+        self._network = replace(network, dyad_columns={}, refused_columns={})
+        self._mask = None if mask is None else self._checked(mask)
         self._rows = range(network.n_nodes)
-        if mask is not None and mask.shape != (network.n_nodes, network.n_nodes):
-            raise DataError(f"a mask must be {network.n_nodes} x {network.n_nodes}; got {mask.shape}")
+
+    def __getstate__(self) -> dict[str, Any]:
+        kept = ("_network", "_columns", "_mask", "_rows", "digest")
+        return {name: self.__dict__[name] for name in kept if name in self.__dict__}
+
+    def _checked(self, mask: Bools) -> Bools:
+        """A copy of a mask that is True on dyads only."""
+        n = self.n_nodes
+        if mask.shape != (n, n) or mask.dtype != np.bool_:
+            raise DataError(f"a mask must be {n} x {n} booleans; got {mask.dtype} of shape {mask.shape}")
+        if not self.directed:
+            return np.triu(mask, 1)
+        copied = mask.copy()
+        np.fill_diagonal(copied, False)
+        return copied
 
     def _view(self, mask: Bools | None, rows: range) -> Dyads:
         view = object.__new__(Dyads)
@@ -56,9 +72,14 @@ class Dyads:
         return view
 
     def select(self, mask: Bools, /) -> Dyads:
-        """The dyads of this view for which the (N, N) mask is True."""
-        both = mask if self._mask is None else self._mask & mask
-        return self._view(both, self._rows)
+        """The dyads of this view for which the (N, N) mask is True.
+
+        Raises
+        ------
+        DataError : the mask has another shape than the network, or does not hold booleans
+        """
+        checked = self._checked(mask)
+        return self._view(checked if self._mask is None else self._mask & checked, self._rows)
 
     def blocks(self, most: int = 1_000_000) -> Iterator[Dyads]:
         """The same dyads in consecutive row blocks of at most about `most` dyads (never less than a row)."""
@@ -72,15 +93,13 @@ class Dyads:
     @cached_property
     def _ends(self) -> tuple[Integers, Integers]:
         first, n = self._rows.start, self.n_nodes
-        inside = np.ones((len(self._rows), n), dtype=bool)
         if self._mask is not None:
-            inside &= self._mask[first : self._rows.stop]
-        rows = np.arange(first, self._rows.stop)
-        inside[np.arange(len(rows)), rows] = False
-        if not self.directed:
-            inside &= np.arange(n)[None, :] > rows[:, None]
+            inside = self._mask[first : self._rows.stop]
+        else:
+            rows, columns = np.arange(first, self._rows.stop)[:, None], np.arange(n)[None, :]
+            inside = columns != rows if self.directed else columns > rows
         origin, destination = np.nonzero(inside)
-        return origin.astype(np.int64) + first, destination.astype(np.int64)
+        return read_only(origin.astype(np.int64) + first), read_only(destination.astype(np.int64))
 
     @property
     def labels(self) -> tuple[str, ...]:
@@ -112,7 +131,10 @@ class Dyads:
         return self._network.column(name)
 
     def __len__(self) -> int:
-        return len(self.origin)
+        if self._mask is not None:
+            return int(np.count_nonzero(self._mask[self._rows.start : self._rows.stop]))
+        n = self.n_nodes
+        return sum(n - 1 if self.directed else n - 1 - row for row in self._rows)
 
     @property
     def origin(self) -> Integers:
@@ -131,17 +153,17 @@ class Dyads:
         # Slicing compressed rows copies only this block's links.
         block = self._network.flows[first : self._rows.stop].toarray()
         values = block[self.origin - first, self.destination]
-        return np.asarray(values / self.unit, dtype=np.float64)
+        return read_only(np.asarray(values / self.unit, dtype=np.float64))
 
     @cached_property
     def links(self) -> Bools:
         """(n,) True where a flow was observed."""
-        return self.weights > 0
+        return read_only(self.weights > 0)
 
     @cached_property
     def counts(self) -> Floats:
         """(n,) whole numbers of the unit: amounts rounded, with every link kept at 1 at least."""
-        return np.where(self.links, np.maximum(np.rint(self.weights), 1.0), 0.0)
+        return read_only(np.where(self.links, np.maximum(np.rint(self.weights), 1.0), 0.0))
 
     @property
     def n_links(self) -> int:
@@ -183,7 +205,10 @@ class Dyads:
         Two views with one digest are scored on the same observations.
         """
         total = hashlib.sha256(repr((self.labels, self.directed, float(self.unit))).encode())
-        for part in (self.origin, self.destination):
-            total.update(part.astype("<i8").tobytes())
-        total.update(self.weights.astype("<f8").tobytes())
+        parts = [hashlib.sha256() for _ in range(3)]
+        for block in self.blocks():
+            for part, values in zip(parts, (block.origin, block.destination, block.weights), strict=True):
+                part.update(values.astype("<i8" if values.dtype.kind == "i" else "<f8").tobytes())
+        for part in parts:
+            total.update(part.digest())
         return total.hexdigest()

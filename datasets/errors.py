@@ -12,7 +12,7 @@ SteelyardError              the root: catch this to catch all of ours
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 
 __all__ = [
     "CovariateError",
@@ -41,6 +41,10 @@ class DataError(SteelyardError):
         self.problems = problems
         super().__init__("\n".join(problems))
 
+    def __reduce__(self) -> tuple[type[DataError], tuple[str, ...]]:
+        # Exceptions come back from worker processes, and must come back whole.
+        return type(self), self.problems
+
 
 class CovariateError(DataError):
     """A covariate cannot be computed from the columns that the data hold."""
@@ -64,9 +68,18 @@ class UnknownNameError(SteelyardError):
         self.kind = kind
         self.name = name
         known = sorted(known)
+        self._rebuilt_from = (kind, name, known, where)
         self.nearest = nearest_names(name, known)
         place = f" ({where})" if where else ""
         super().__init__(f"there is no {kind} named '{name}'{place}; {suggestion(name, known)}")
+
+    def __reduce__(self) -> tuple[Callable[..., UnknownNameError], tuple[object, ...]]:
+        return _unknown_name, self._rebuilt_from
+
+
+def _unknown_name(kind: str, name: str, known: Iterable[str], where: str) -> UnknownNameError:
+    """Unpickling cannot pass keywords."""
+    return UnknownNameError(kind, name, known, where=where)
 
 
 def nearest_names(name: str, known: Iterable[str], *, most: int = 3) -> tuple[str, ...]:

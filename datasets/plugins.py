@@ -11,7 +11,7 @@ import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from functools import partial
-from importlib.metadata import entry_points
+from importlib.metadata import EntryPoint, entry_points
 from types import MappingProxyType
 from typing import Generic, TypeVar
 
@@ -74,6 +74,11 @@ class Registry(Generic[T]):
     refused: tuple[BrokenPlugin, ...] = ()
 
     def __post_init__(self) -> None:
+        for name, entry in self.entries.items():
+            if not NAME.fullmatch(name):
+                raise RegistrationError(
+                    f"the {self.kind} name '{name}' of {entry.provider} must be lower-case words joined by _ or -"
+                )
         object.__setattr__(self, "entries", MappingProxyType(dict(self.entries)))
 
     @property
@@ -94,7 +99,7 @@ class Registry(Generic[T]):
         entry = self.entries[name]
         try:
             return self.check(name, entry.load())
-        except Exception as error:
+        except (Exception, SystemExit) as error:  # a stranger's module may even try to end the program
             raise RegistrationError(
                 f"the {self.kind} '{name}' of {entry.provider} cannot be used: {_one_line(error)}"
             ) from error
@@ -117,10 +122,6 @@ class Registry(Generic[T]):
         ------
         RegistrationError : the name is malformed or taken
         """
-        if not NAME.fullmatch(name):
-            raise RegistrationError(
-                f"the {self.kind} name '{name}' of {entry.provider} must be lower-case words joined by _ or -"
-            )
         if name in self.entries:
             raise RegistrationError(
                 f"the {self.kind} name '{name}' of {entry.provider} is already taken by "
@@ -144,11 +145,19 @@ class Registry(Generic[T]):
         return registry
 
 
-def _provider(point: object) -> str:
-    distribution = getattr(point, "dist", None)
-    return f"the package {distribution.name}" if distribution is not None else "an unnamed package"
+def _provider(point: EntryPoint) -> str:
+    try:
+        name = None if point.dist is None else point.dist.name
+    except (
+        AttributeError,
+        KeyError,
+        OSError,
+        TypeError,
+    ):  # half-removed packages; it differs between Pythons
+        name = None
+    return f"the package {name}" if name else "an unnamed package"
 
 
-def _one_line(error: Exception) -> str:
+def _one_line(error: BaseException) -> str:
     text = " ".join(str(error).split()) or "no reason given"
     return text if isinstance(error, RegistrationError) else f"{type(error).__name__}: {text}"
