@@ -32,7 +32,7 @@ class Covariances:
 
     def standard_errors(self, kind: ErrorKind) -> Floats:
         """(k,) square roots of the diagonal."""
-        return np.asarray(np.sqrt(np.diag(self.by_kind[kind])))
+        return np.asarray(np.sqrt(np.maximum(np.diag(self.by_kind[kind]), 0.0)))
 
 
 def covariances(information: Floats, scores: Floats, pairs: NodePairs | None) -> Covariances:
@@ -88,6 +88,9 @@ def _semidefinite(matrix: Floats, unit: Floats) -> tuple[Floats, bool]:
     """
     root = np.sqrt(np.diag(unit))
     values, vectors = eigh((matrix + matrix.T) / 2 / np.outer(root, root))
+    if np.abs(values).max() <= 1e-12:
+        # Rounding only: with three nodes every two dyads share one, so the scores add up to zero.
+        return np.zeros_like(matrix), False
     if values[0] >= -1e-12 * max(1.0, float(values[-1])):
         return (matrix + matrix.T) / 2, False
     clipped = (vectors * np.maximum(values, 0.0)) @ vectors.T

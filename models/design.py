@@ -38,7 +38,8 @@ def scaled_design(design: Floats) -> ScaledDesign:
     """Scale an (n, k) design; columns are centred only when the first is the constant 1.
 
     A column is set aside when less than 1e-9 of its length is left after the columns before it are taken
-    out, so the order of covariates decides which of two equal ones is estimated.
+    out, so the order of covariates decides which of two equal ones is estimated. Columns far from zero (a
+    year, a date in seconds) come rounded; what is left must then also exceed that rounding.
     """
     n, k = design.shape
     has_constant = k > 0 and bool((design[:, 0] == 1.0).all())
@@ -52,7 +53,8 @@ def scaled_design(design: Floats) -> ScaledDesign:
     scale = np.where(negligible, 1.0, spread)
     matrix /= scale
     matrix[:, negligible] = 0.0
-    kept = _independent(matrix)
+    rounding = 4.0 * np.finfo(np.float64).eps * np.abs(design).max(axis=0, initial=0.0) / scale
+    kept = _independent(matrix, rounding)
     back = np.zeros((k, len(kept)))
     back[kept, np.arange(len(kept))] = 1.0 / scale[kept]
     if has_constant:
@@ -60,8 +62,8 @@ def scaled_design(design: Floats) -> ScaledDesign:
     return ScaledDesign(np.asfortranarray(matrix[:, kept]), kept, back)
 
 
-def _independent(matrix: Floats) -> Integers:
-    """Positions of the columns that are not combinations of earlier ones."""
+def _independent(matrix: Floats, rounding: Floats) -> Integers:
+    """Positions of the columns that are not combinations of earlier ones; `rounding` is (k,) for an entry."""
     n, k = matrix.shape
     basis = np.empty((n, 0))
     kept: list[int] = []
@@ -72,7 +74,8 @@ def _independent(matrix: Floats) -> Integers:
         rest = vector - basis @ (basis.T @ vector)
         rest -= basis @ (basis.T @ rest)
         left = float(np.linalg.norm(rest))
-        if length > 0 and left > ALIAS_LIMIT * length:
+        noise = float(np.max(rounding[[*kept, column]]))
+        if length > 0 and left > max(ALIAS_LIMIT, noise) * length:
             kept.append(column)
             basis = np.column_stack([basis, rest / left])
     return np.array(kept, dtype=np.int64)

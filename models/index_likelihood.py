@@ -20,7 +20,7 @@ from steelyard.models.design import ScaledDesign, scaled_design
 from steelyard.models.errors import ModelError
 from steelyard.models.estimates import ErrorKind
 from steelyard.models.separation import MOVES, separating_direction
-from steelyard.models.solvers import Slope, newton_maximise
+from steelyard.models.solvers import Maximum, Slope, newton_maximise
 
 __all__ = ["Edges", "IndexDerivatives", "IndexFit", "IndexLikelihood", "fit_indices"]
 
@@ -112,45 +112,66 @@ def fit_indices(
     keep = np.ones(n, dtype=bool)
     directions: list[Floats] = []
     while True:
-        kept_likelihood = likelihood.restricted(keep) if directions else likelihood
         scaled = [scaled_design(d[keep]) for d in designs]
-        _refuse_too_few(int(keep.sum()), scaled)
-        direction = _surely_separating(kept_likelihood, scaled[0])
-        if direction is None:
-            objective = _Indices(kept_likelihood, scaled)
-            maximum = newton_maximise(objective, kept_likelihood.start(objective.matrices))
-            edges = kept_likelihood.edges
-            if not maximum.moving:
-                break
-            direction = separating_direction(scaled[0].matrix, edges.lower, edges.upper)
-            if direction is None:
-                break
-        original = scaled[0].back @ direction
-        moved = np.abs(scaled[0].matrix @ direction) > MOVES
+        found = _maximum_or_direction(likelihood.restricted(keep) if directions else likelihood, scaled)
+        if isinstance(found, tuple):
+            objective, maximum = found
+            break
+        moved = np.abs(scaled[0].matrix @ found) > MOVES
         keep[np.flatnonzero(keep)[moved]] = False
-        directions.append(original)
+        directions.append(_on_original_columns(scaled[0], found))
         if not keep.any():
             return _all_separated(designs, directions)
     scores = objective.scores(maximum.point)
     some_pairs = None if pairs is None else _kept_pairs(pairs, keep)
-    found = covariances(maximum.information, scores, some_pairs) if maximum.convergence.converged else None
-    return _assembled(scaled, maximum.point, found, directions, ~keep, maximum.convergence)
+    kinds = covariances(maximum.information, scores, some_pairs) if maximum.convergence.converged else None
+    return _assembled(scaled, maximum.point, kinds, directions, ~keep, maximum.convergence)
 
 
-def _surely_separating(likelihood: IndexLikelihood, design: ScaledDesign) -> Floats | None:
+def _maximum_or_direction(
+    likelihood: IndexLikelihood, scaled: Sequence[ScaledDesign]
+) -> tuple[_Indices, Maximum] | Floats:
+    """Where the search ended, or a direction along which there is no maximum."""
+    direction = _surely_separating(likelihood, scaled)
+    if direction is not None:
+        return direction
+    _refuse_too_few(len(scaled[0].matrix), scaled)
+    objective = _Indices(likelihood, scaled)
+    maximum = newton_maximise(objective, likelihood.start(objective.matrices))
+    # A separated search may also end with an information matrix that has rounded to singular, so that nothing
+    # seems to move any more: every uncertified end is asked about.
+    if not maximum.convergence.converged:
+        direction = separating_direction(scaled[0].matrix, likelihood.edges.lower, likelihood.edges.upper)
+    return (objective, maximum) if direction is None else direction
+
+
+def _surely_separating(likelihood: IndexLikelihood, scaled: Sequence[ScaledDesign]) -> Floats | None:
     """Look before fitting where that is cheap: when most columns are pinned by observations inside their range.
 
-    Without any such observation (a logit) the question is a large linear programme; there Newton's steps, which
-    never shrink under separation, say whether it needs to be asked.
+    It is cheap too where there are too few observations to fit, and they may all be separated. Otherwise,
+    without any such observation (a logit) the question is a large linear programme; there Newton's steps,
+    which never shrink under separation, say whether it needs to be asked.
     """
     edges = likelihood.edges
-    if (edges.lower | edges.upper).all():
+    if (edges.lower | edges.upper).all() and len(edges.lower) > _rank(scaled):
         return None
-    return separating_direction(design.matrix, edges.lower, edges.upper)
+    return separating_direction(scaled[0].matrix, edges.lower, edges.upper)
+
+
+def _on_original_columns(scaled: ScaledDesign, direction: Floats) -> Floats:
+    """A direction on the original columns, with exact zeros for the terms that it does not move."""
+    exact = np.where(np.abs(direction) > 1e-9, direction, 0.0)
+    original = scaled.back @ exact
+    # What is left of the constant may be the rounding of the centres that were taken off.
+    return np.where(np.abs(original) > 1e-9 * (np.abs(scaled.back) @ np.abs(exact)), original, 0.0)
+
+
+def _rank(scaled: Sequence[ScaledDesign]) -> int:
+    return sum(len(s.kept) for s in scaled)
 
 
 def _refuse_too_few(n: int, scaled: Sequence[ScaledDesign]) -> None:
-    rank = sum(len(s.kept) for s in scaled)
+    rank = _rank(scaled)
     if n <= rank:
         raise ModelError(
             f"{n} observations cannot identify {rank} coefficients; use fewer covariates or more dyads"

@@ -7,11 +7,11 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from scipy.special import digamma, expit, polygamma, xlogy
+from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
 from steelyard.models.index_likelihood import Edges, IndexDerivatives
-from steelyard.models.special import negative_binomial_log_mass
+from steelyard.models.special import deviance_term, negative_binomial_log_mass
 
 __all__ = [
     "GeometricExcess",
@@ -21,6 +21,8 @@ __all__ = [
     "Poisson",
     "least_squares",
 ]
+
+SERIES_FROM = 100.0
 
 
 def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
@@ -52,12 +54,8 @@ class Poisson:
         return least_squares(designs[0], np.log(mean) + (self.response - mean) / mean, mean)
 
     def value(self, indices: Sequence[Floats], /) -> float:
-        index = indices[0]
-        return float(np.sum(self.response * (index - self._log_response) + self.response - np.exp(index)))
-
-    @cached_property
-    def _log_response(self) -> Floats:
-        return np.log(np.where(self.response > 0, self.response, 1.0))
+        # Half the deviance, which keeps its digits at weights of 1e12.
+        return -float(np.sum(deviance_term(self.response, np.exp(indices[0]))))
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         mean = np.exp(indices[0])
@@ -88,8 +86,9 @@ class Logit:
         return float(-np.sum(np.logaddexp(0.0, -signed)))
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
-        probability = expit(indices[0])
-        return _one_index(self.response - probability, -probability * expit(-indices[0]))
+        probability, rest = expit(indices[0]), expit(-indices[0])
+        # 1 - p as such would round to 0 at an index of 37, and a separated fit would seem to stand still.
+        return _one_index(np.where(self.response == 1, rest, -probability), -probability * rest)
 
 
 @dataclass(frozen=True, eq=False)
@@ -118,6 +117,20 @@ class GeometricExcess:
         return _one_index((self.response - 1) * rest - y, -self.response * y * rest)
 
 
+def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
+    """First and second derivative of the log mass in a large size r, without differences of nearly equal terms.
+
+    The logarithms of the digamma series meet log(1 + mean / r) in log(1 + t) - t, t = (w - mean) / (r + mean).
+    """
+    both, total = w + r, mean + r
+    t = (w - mean) / total
+    gap = [(1 / r) ** k - (1 / both) ** k for k in range(8)]
+    first = w / (2 * r * both) - deviance_term(np.ones_like(t), both / total)
+    first += gap[2] / 12 - gap[4] / 120 + gap[6] / 252
+    tails = -(gap[2] / 2 + gap[3] / 6 - gap[5] / 30 + gap[7] / 42)
+    return first, t**2 / both + tails
+
+
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
     """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
@@ -132,10 +145,10 @@ class NegativeBinomialQuadratic:
         return NegativeBinomialQuadratic(self.response[keep])
 
     @cached_property
-    def _distinct(self) -> tuple[Floats, Integers, Floats]:
-        """Distinct responses, where each observation's stands among them, and how often each occurs."""
-        values, inverse, counts = np.unique(self.response, return_inverse=True, return_counts=True)
-        return values, inverse, counts.astype(np.float64)
+    def _distinct(self) -> tuple[Floats, Integers]:
+        """Distinct responses, and where each observation's stands among them."""
+        values, inverse = np.unique(self.response, return_inverse=True)
+        return values, inverse
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
         """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply."""
@@ -149,27 +162,21 @@ class NegativeBinomialQuadratic:
         return np.append(coefficients, np.log(np.clip(alpha, 0.05, 20.0)))
 
     def value(self, indices: Sequence[Floats], /) -> float:
-        index, size = indices[0], np.exp(-indices[1][0])
-        values, _, counts = self._distinct
-        # At mean = w the mass has no deviance part, so what depends on w alone is found without cancellation.
-        alone = negative_binomial_log_mass(values, values, size)
-        alone = (
-            alone
-            + xlogy(values, 1.0 + size / np.where(values > 0, values, 1.0))
-            + size * np.log1p(values / size)
-        )
-        log_ratio = index - np.log(size)
-        shared = self.response * np.logaddexp(0, -log_ratio) + size * np.logaddexp(0, log_ratio)
-        return float(counts @ alone - shared.sum())
+        # Any shortcut that adds up w log(mean) terms loses, at weights of 1e9, what the line search must see.
+        size = np.exp(-indices[1][0])
+        return float(np.sum(negative_binomial_log_mass(self.response, np.exp(indices[0]), size)))
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         w, mean, r = self.response, np.exp(indices[0]), float(np.exp(-indices[1][0]))
-        values, inverse, _ = self._distinct
-        psi = (digamma(values + r) - digamma(r))[inverse]
-        psi_1 = (polygamma(1, values + r) - polygamma(1, r))[inverse]
+        values, inverse = self._distinct
         total = r + mean
-        by_size = psi - np.log1p(mean / r) + (mean - w) / total
-        by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
+        if r < SERIES_FROM:
+            psi = (digamma(values + r) - digamma(r))[inverse]
+            psi_1 = (polygamma(1, values + r) - polygamma(1, r))[inverse]
+            by_size = psi - np.log1p(mean / r) + (mean - w) / total
+            by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
+        else:
+            by_size, by_size_2 = _nearly_poisson(w, mean, r)
         first = np.stack([r * (w - mean) / total, -r * by_size])
         second = np.empty((2, 2, len(w)))
         second[0, 0] = -mean * r * (r + w) / total**2

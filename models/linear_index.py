@@ -12,6 +12,7 @@ from steelyard.datasets import Dyads, Floats
 from steelyard.models.covariance import NodePairs
 from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import IndexFit
+from steelyard.models.separation import MOVES
 
 __all__ = ["LinearIndex", "index_estimates", "node_pairs", "scale_estimate"]
 
@@ -52,7 +53,8 @@ class LinearIndex:
         for direction in self.directions:
             along = np.array(direction)
             move = design @ along
-            tolerance = 1e-7 * (np.abs(design) @ np.abs(along))
+            # The limit that the fit itself used, and the rounding of columns that lie far from zero.
+            tolerance = MOVES + 1e-14 * (np.abs(design) @ np.abs(along))
             hit = ~decided & (np.abs(move) > tolerance)
             index[hit] = np.sign(move[hit]) * inf
             decided |= hit
@@ -64,7 +66,7 @@ def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart
     names = (CONSTANT, *covariates)
     rows = []
     for position, name in enumerate(names):
-        along = next((d[position] for d in fit.directions if abs(d[position]) > 1e-9), 0.0)
+        along = next((d[position] for d in fit.directions if d[position] != 0.0), 0.0)
         if along:
             note = "no finite estimate: the data are separated along it"
             rows.append(Estimate(part, name, inf if along > 0 else -inf, {}, Status.BOUNDARY, note=note))
@@ -86,8 +88,10 @@ def scale_estimate(fit: IndexFit, index: int, name: str, part: EstimatePart) -> 
 
 
 def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, float]:
+    # A variance of zero may round to just below it.
     return {
-        kind: factor * float(np.sqrt(matrix[position, position])) for kind, matrix in fit.covariances.items()
+        kind: factor * float(np.sqrt(np.maximum(matrix[position, position], 0.0)))
+        for kind, matrix in fit.covariances.items()
     }
 
 

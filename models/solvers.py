@@ -56,7 +56,6 @@ class Maximum:
     point: Floats
     information: Floats
     convergence: Convergence
-    moving: bool
 
 
 def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> Maximum:
@@ -90,7 +89,7 @@ def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> 
             slope = objective.slope(point)
         if decrement <= DECREMENT_LIMIT**1.2 and movement <= MOVEMENT_LIMIT:
             break
-    return _certified(point, slope, iterations, movement)
+    return _certified(point, value, slope, iterations, movement)
 
 
 def _ascent_step(slope: Slope) -> Floats:
@@ -118,24 +117,23 @@ def _step_length(objective: Objective, point: Floats, step: Floats, value: float
     return 0.0
 
 
-def _certified(point: Floats, slope: Slope, iterations: int, movement: float) -> Maximum:
+def _certified(point: Floats, value: float, slope: Slope, iterations: int, movement: float) -> Maximum:
     """Judge the last point; `movement` is the size of the step that led to it."""
-    finite = bool(np.isfinite(point).all() and np.isfinite(slope.gradient).all())
+    finite = bool(np.isfinite(value) and np.isfinite(point).all() and np.isfinite(slope.gradient).all())
     if not finite or not np.isfinite(slope.information).all():
-        return Maximum(point, slope.information, Convergence(False, iterations, np.inf, "not finite"), False)
+        return Maximum(point, slope.information, Convergence(False, iterations, np.inf, "not finite"))
     residual = float(np.max(np.abs(slope.gradient) / np.maximum(1.0, slope.scale), initial=0.0))
     definite = _positive_definite(slope.information)
     decrement = float(slope.gradient @ _ascent_step(slope)) if definite else np.inf
-    moving = movement > MOVEMENT_LIMIT
     reasons = []
     if residual > RESIDUAL_LIMIT and not 0 <= decrement <= DECREMENT_LIMIT:
         reasons.append(f"gradient residual {residual:.1e} after {iterations} steps")
     if not definite:
         reasons.append("information matrix not positive definite")
-    if moving:
+    if movement > MOVEMENT_LIMIT:
         reasons.append("estimates still moving")
     return Maximum(
-        point, slope.information, Convergence(not reasons, iterations, residual, "; ".join(reasons)), moving
+        point, slope.information, Convergence(not reasons, iterations, residual, "; ".join(reasons))
     )
 
 

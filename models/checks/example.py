@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from types import MappingProxyType
 
@@ -10,6 +11,7 @@ from scipy.sparse import csr_array
 
 from steelyard.datasets import (
     Bools,
+    Covariate,
     DyadCovariate,
     Dyads,
     End,
@@ -25,7 +27,7 @@ __all__ = ["EXAMPLE_COVARIATES", "ExampleFlows"]
 
 # Names that the example's dyads know; both are defined for directed and for undirected networks.
 EXAMPLE_COVARIATES = ("size", "distance")
-_DEFINITIONS = MappingProxyType(
+_DEFINITIONS: Mapping[str, Covariate] = MappingProxyType(
     {
         "size": NodeCovariate("size", End.BOTH, Transform.LOG),
         "distance": DyadCovariate("distance", Transform.LOG),
@@ -74,10 +76,9 @@ class ExampleFlows:
         )
         return Dyads(network, _DEFINITIONS)
 
-    def reordered(self) -> ExampleFlows:
-        """The same network with its places listed in another order."""
-        order = np.random.default_rng(_SEED + 1).permutation(self.n_nodes)
-        return replace(self, order=order.astype(np.int64))
+    def new_order(self) -> Integers:
+        """(N,) the places in another order, for `order`."""
+        return np.random.default_rng(_SEED + 1).permutation(self.n_nodes).astype(np.int64)
 
     def training_mask(self) -> Bools:
         """(N, N) True on about four fifths of the pairs, symmetric."""
@@ -103,7 +104,7 @@ class ExampleFlows:
 def _places(n: int) -> tuple[Floats, Floats]:
     """Sizes and symmetric distances."""
     rng = np.random.default_rng(_SEED)
-    size = np.round(np.exp(rng.normal(2.0, 0.8, n)), 3)
+    size = np.round(np.exp(rng.normal(2.0, 0.8, n)), 3).astype(np.float64)
     x, y = rng.random(n), rng.random(n)
     distance = np.round(100.0 * np.hypot(x[:, None] - x[None, :], y[:, None] - y[None, :]) + 5.0, 3)
     return size, distance

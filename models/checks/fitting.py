@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import is_dataclass
+from dataclasses import is_dataclass, replace
 
 import numpy as np
 
@@ -78,16 +78,16 @@ def held_out_flows_do_not_matter(model: Model, flows: ExampleFlows) -> None:
     """Flows outside the training dyads, however different, leave the fit as it was."""
     mask = flows.training_mask()
     own, other = flows.dyads, flows.changed_outside(mask).dyads
-    predictions = [model.fit(dyads.select(mask)).expected_weight(own) for dyads in (own, other)]
-    require(np.array_equal(*predictions), f"{model.name}: the fit looks at flows outside its training dyads")
+    first, second = (model.fit(dyads.select(mask)).expected_weight(own) for dyads in (own, other))
+    require(np.array_equal(first, second), f"{model.name}: the fit looks at flows outside its training dyads")
 
 
 def order_of_places_does_not_matter(model: Model, flows: ExampleFlows) -> None:
     """Listing the places in another order permutes the predictions and changes nothing else."""
-    other = flows.reordered()
+    order = flows.new_order()
+    other = replace(flows, order=order)
     plain = _matrix(flows.dyads, model.fit(flows.dyads).expected_weight(flows.dyads))
     moved = _matrix(other.dyads, model.fit(other.dyads).expected_weight(other.dyads))
-    order = other.order
     require(
         np.allclose(plain[np.ix_(order, order)], moved, rtol=1e-6, atol=1e-9),
         f"{model.name}: predictions depend on the order in which places are listed",

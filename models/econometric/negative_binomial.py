@@ -16,6 +16,7 @@ from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import NegativeBinomialQuadratic, Poisson
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
 from steelyard.models.measure import Measure
+from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
 
@@ -41,16 +42,34 @@ class FittedNegativeBinomial:
 def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | None = None) -> IndexFit:
     """Fit plain arrays; the second index is the constant log alpha.
 
-    Where the counts vary less than Poisson counts would, the likelihood only rises as alpha falls to 0: then
-    the Poisson fit is the maximum, and it comes back with one index instead of two.
+    Where the likelihood is highest at alpha = 0, the Poisson fit is the maximum, and it comes back with one
+    index instead of two. The slope at alpha = 0 alone does not say so: the likelihood may fall there and rise
+    again to a higher maximum inside, so in that case both are fitted and compared.
     """
     poisson = fit_indices(Poisson(response), [design], pairs)
-    mean = np.exp(design @ poisson.coefficients[0])
-    mean[poisson.separated] = 0.0
+    mean = _mean(poisson, design)
     # Slope of the log-likelihood in alpha at alpha = 0, times two.
-    if float(np.sum((response - mean) ** 2 - response)) <= 0.0:
+    falls = float(np.sum((response - mean) ** 2 - response)) <= 0.0
+    if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
         return poisson
-    return fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
+    inside = fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
+    if not falls:
+        return inside
+    if not inside.convergence.converged:
+        return poisson
+    size = np.exp(-inside.coefficients[1][0])
+    gain = negative_binomial_log_mass(response, _mean(inside, design), size) - poisson_log_mass(
+        response, mean
+    )
+    return inside if float(gain.sum()) > 0.0 else poisson
+
+
+def _mean(found: IndexFit, design: Floats) -> Floats:
+    """(n,) fitted means, 0 on separated observations."""
+    kept = ~found.separated
+    mean = np.zeros(len(design))
+    mean[kept] = np.exp(design[kept] @ found.coefficients[0])
+    return mean
 
 
 @dataclass(frozen=True)

@@ -82,7 +82,7 @@ class DegreeEquations:
         size = self._sums(self.free.astype(np.float64))
         share = (self.degrees + 0.5) / (size + 1.0)
         overall = float(self.degrees.sum() / size.sum())
-        return np.log(share / (1 - share)) - 0.5 * np.log(overall / (1 - overall))
+        return np.asarray(np.log(share / (1 - share)) - 0.5 * np.log(overall / (1 - overall)))
 
 
 def gauge_directions(origin_part: Integers, destination_part: Integers, *, directed: bool) -> Floats:
