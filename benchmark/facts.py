@@ -8,12 +8,13 @@ from importlib.metadata import version
 
 import numpy as np
 
+from steelyard.benchmark.footing import Footing, Scope
 from steelyard.benchmark.study import Study
-from steelyard.datasets import FlowNetwork
-from steelyard.models import Model, ModelClass
-from steelyard.reports import MethodSheet, ReportFacts
+from steelyard.datasets import Dyads, FlowNetwork
+from steelyard.models import Measure, Model, ModelClass
+from steelyard.reports import FootingSheet, MethodSheet, ReportFacts
 
-__all__ = ["data_facts", "method_sheet", "report_facts", "software_versions"]
+__all__ = ["data_facts", "footing_sheets", "method_sheet", "report_facts", "software_versions"]
 
 LIBRARIES = ("steelyard", "numpy", "scipy", "pandas", "statsmodels", "joblib", "matplotlib")
 
@@ -26,6 +27,25 @@ def report_facts(study: Study) -> ReportFacts:
         methods=tuple(_methods(study)),
         provenance=(*_provenance(study), *software_versions().items()),
         notes=_notes(),
+        footings=footing_sheets(study.dyads),
+    )
+
+
+def footing_sheets(dyads: Dyads) -> tuple[FootingSheet, ...]:
+    """Every footing on these dyads, in the order a reader wants them: whole flows, parts, expected flows."""
+    whole = "For the whole law of the flows: where links are, and how heavy they are."
+    given = "For the weights alone, where the links are known."
+    sheets = (
+        (Measure.COUNTS, Scope.WHOLE, "Whole flows (links and weights), as counts", whole),
+        (Measure.AMOUNTS, Scope.WHOLE, "Whole flows (links and weights), as amounts", whole),
+        (Measure.LINKS, Scope.WHOLE, "Which links exist", "For the links alone, whatever they carry."),
+        (Measure.COUNTS, Scope.GIVEN_LINKS, "How heavy a given link is, as counts", given),
+        (Measure.AMOUNTS, Scope.GIVEN_LINKS, "How heavy a given link is, as amounts", given),
+        (None, Scope.WHOLE, "Expected flow on each dyad", "For one predicted flow a dyad, without its law."),
+    )
+    return tuple(
+        FootingSheet(Footing.of(dyads, measure, scope).text, title, purpose)
+        for measure, scope, title, purpose in sheets
     )
 
 

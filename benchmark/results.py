@@ -8,7 +8,14 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
-from steelyard.reports import MethodSheet, ReportFacts, ReportFormat, terminal_summary, write_reports
+from steelyard.reports import (
+    FootingSheet,
+    MethodSheet,
+    ReportFacts,
+    ReportFormat,
+    terminal_summary,
+    write_reports,
+)
 
 __all__ = ["Results", "facts_from_json", "facts_to_json"]
 
@@ -87,4 +94,5 @@ def facts_from_json(text: str) -> ReportFacts:
         methods=tuple(MethodSheet(**sheet) for sheet in raw["methods"]),
         provenance=tuple((k, v) for k, v in raw["provenance"]),
         notes=tuple(raw["notes"]),
+        footings=tuple(FootingSheet(**sheet) for sheet in raw.get("footings", [])),
     )

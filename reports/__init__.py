@@ -2,11 +2,11 @@
 
 from steelyard.reports.document import Document, build_document
 from steelyard.reports.errors import ReportError
-from steelyard.reports.facts import MethodSheet, ReportFacts, ReportFormat
+from steelyard.reports.facts import FootingSheet, MethodSheet, ReportFacts, ReportFormat
 from steelyard.reports.html import render_html
 from steelyard.reports.markdown import render_markdown
 from steelyard.reports.page import write_reports
-from steelyard.reports.tables import Alignment, Cell, CellKind, Column, Grid, Missing, Table
+from steelyard.reports.tables import Alignment, Cell, CellKind, Column, Estimate, Grid, Missing, Table
 from steelyard.reports.terminal import terminal_summary
 from steelyard.reports.text import render_text
 
@@ -16,6 +16,8 @@ __all__ = [
     "CellKind",
     "Column",
     "Document",
+    "Estimate",
+    "FootingSheet",
     "Grid",
     "MethodSheet",
     "Missing",

@@ -3,21 +3,23 @@
 import io
 import textwrap
 import warnings
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager, nullcontext
 from dataclasses import dataclass
 from enum import Enum
+from functools import cached_property
 from types import MappingProxyType
 from typing import Any
 
 import matplotlib
+from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.layout_engine import ConstrainedLayoutEngine
 
+from steelyard.reports.fonts import light_font
 from steelyard.reports.palette import INK, QUIET
 
-__all__ = ["Drawing", "FigureFormat", "blank_figure", "drawing_style", "set_title"]
+__all__ = ["Drawing", "FigureFormat", "arrange", "blank_figure", "drawing_style", "set_title"]
 
 WIDTH = 6.5
 # Mapping[Any, Any]: matplotlib types its settings by a literal of every name.
@@ -77,8 +79,18 @@ class Drawing:
 
     def content(self, file_format: FigureFormat) -> bytes:
         """Bytes of the figure; equal drawings give equal bytes."""
+        return self._svg if file_format is FigureFormat.SVG else self._printed(file_format)
+
+    @cached_property
+    def _svg(self) -> bytes:
+        """Drawn once: the file and the page hold the same."""
+        content = self._printed(FigureFormat.SVG)
+        return b"\n".join(line.rstrip() for line in content.splitlines()) + b"\n"
+
+    def _printed(self, file_format: FigureFormat) -> bytes:
         stream = io.BytesIO()
-        with drawing_style():
+        font = light_font(self.figure) if file_format is FigureFormat.PDF else nullcontext()
+        with drawing_style(), font:
             self.figure.savefig(
                 stream,
                 format=file_format.value,
@@ -86,10 +98,7 @@ class Drawing:
                 facecolor="white" if file_format is FigureFormat.PNG else "none",
                 transparent=file_format is not FigureFormat.PNG,
             )
-        content = stream.getvalue()
-        if file_format is FigureFormat.SVG:
-            content = b"\n".join(line.rstrip() for line in content.splitlines()) + b"\n"
-        return content
+        return stream.getvalue()
 
 
 @contextmanager
@@ -110,13 +119,51 @@ def blank_figure(height: float) -> Figure:
     return figure
 
 
-def set_title(figure: Figure, finding: str, subtitle: str) -> None:
-    """The finding in bold at the top left, and below it what is shown on which footing."""
-    title = textwrap.fill(finding, 76)
+def set_title(figure: Figure, finding: str, subtitle: str) -> float:
+    """The finding at the top left, and below it what is shown on which footing; returns its height in inches.
+
+    No bold face: every further face costs a PDF one more embedded font, which is most of its time.
+    """
+    title = textwrap.fill(finding, 74)
     lines = title.count("\n") + 1
     below = textwrap.fill(subtitle, 100)
     height = figure.get_figheight()
-    top = 0.19 * lines + 0.16 * (below.count("\n") + 1) + 0.16
-    figure.set_layout_engine(ConstrainedLayoutEngine(rect=(0, 0, 1, 1 - top / height)))
-    figure.text(0.012, 1 - 0.06 / height, title, ha="left", va="top", fontsize=10.5, fontweight="bold")
-    figure.text(0.012, 1 - (0.12 + 0.19 * lines) / height, below, ha="left", va="top", fontsize=8.5)
+    figure.text(0.012, 1 - 0.06 / height, title, ha="left", va="top", fontsize=11)
+    figure.text(
+        0.012, 1 - (0.13 + 0.19 * lines) / height, below, ha="left", va="top", fontsize=8.5, color=INK
+    )
+    return 0.19 * lines + 0.16 * (below.count("\n") + 1) + 0.22
+
+
+def arrange(figure: Figure, panels: Sequence[Sequence[Axes]], *, top: float, bottom: float) -> None:
+    """Place panels beside each other, each as wide as the labels around them leave room for.
+
+    Matplotlib's own layout engines would measure everything again for each file; this measures once.
+
+    Parameters
+    ----------
+    figure : the figure; call when all is drawn
+    panels : left to right; axes that lie on each other (twins) form one panel
+    top, bottom : inches kept for title and legend
+    """
+    width, height = figure.get_size_inches()
+    margins = [[_overhang(axes, figure.dpi) for axes in panel] for panel in panels]
+    left, low, right, high = (
+        [max(sides[side] for sides in panel) + 0.06 for panel in margins] for side in range(4)
+    )
+    each = (width - sum(left) - sum(right)) / len(panels)
+    span = height - top - bottom - max(low) - max(high)
+    start = 0.0
+    for panel, before, after in zip(panels, left, right, strict=True):
+        place = ((start + before) / width, (bottom + max(low)) / height, each / width, span / height)
+        for axes in panel:
+            axes.set_position(place)
+        start += before + each + after
+
+
+def _overhang(axes: Axes, dpi: float) -> tuple[float, float, float, float]:
+    """Inches by which labels stand out of an axes: left, bottom, right, top."""
+    inner = axes.get_window_extent()
+    outer = axes.get_tightbbox() or inner
+    sides = (inner.x0 - outer.x0, inner.y0 - outer.y0, outer.x1 - inner.x1, outer.y1 - inner.y1)
+    return (sides[0] / dpi, sides[1] / dpi, sides[2] / dpi, sides[3] / dpi)

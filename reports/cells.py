@@ -9,7 +9,7 @@ import numpy as np
 
 from steelyard.reports.errors import ReportError
 
-__all__ = ["Cell", "CellKind", "Missing", "format_cell", "is_missing"]
+__all__ = ["Cell", "CellKind", "Estimate", "Missing", "format_cell", "is_missing"]
 
 NO_VALUE = "\N{EN DASH}"
 _MINUS = "\N{MINUS SIGN}"
@@ -26,6 +26,7 @@ class CellKind(Enum):
     DECIMAL = "number with so many decimals"
     P_VALUE = "probability with so many decimals, never written as zero"
     SHARE = "fraction written in per cent with so many decimals"
+    ESTIMATE = "an estimate above its standard error, with so many significant digits"
     YES_NO = "yes or no"
 
 
@@ -36,11 +37,21 @@ class Missing:
     reason: str
 
 
-Cell = str | int | float | bool | Missing | None
+@dataclass(frozen=True)
+class Estimate:
+    """An estimate with one standard error, written below it in parentheses."""
+
+    value: float
+    standard_error: float
+
+
+Cell = str | int | float | bool | Estimate | Missing | None
 
 
 def is_missing(value: object) -> bool:
     """Whether a cell holds no value: None, NaN or a `Missing` with its reason."""
+    if isinstance(value, Estimate):
+        return math.isnan(value.value)
     return value is None or isinstance(value, Missing) or (isinstance(value, float) and math.isnan(value))
 
 
@@ -51,7 +62,7 @@ def format_cell(value: Cell, kind: CellKind, digits: int) -> str:
     ----------
     value : None and NaN become an en dash, a `Missing` its reason, infinities the sign for infinity
     kind : how to write it
-    digits : decimals (DECIMAL, P_VALUE, SHARE) or significant digits (SIGNIFICANT); not used by other kinds
+    digits : decimals (DECIMAL, P_VALUE, SHARE) or significant digits (SIGNIFICANT, ESTIMATE)
 
     Raises
     ------
@@ -65,6 +76,8 @@ def format_cell(value: Cell, kind: CellKind, digits: int) -> str:
         return _text(value)
     if kind is CellKind.YES_NO:
         return _yes_no(value)
+    if kind is CellKind.ESTIMATE:
+        return _estimate(value, digits)
     number = _number(value, kind)
     if math.isinf(number):
         return "∞" if number > 0 else f"{_MINUS}∞"
@@ -87,6 +100,15 @@ def _yes_no(value: object) -> str:
     if not isinstance(value, bool | np.bool_):
         raise _misfit(value, CellKind.YES_NO)
     return "yes" if value else "no"
+
+
+def _estimate(value: object, digits: int) -> str:
+    """Two lines; where there is one line only, the break reads as a space."""
+    if not isinstance(value, Estimate):
+        raise _misfit(value, CellKind.ESTIMATE)
+    above = format_cell(value.value, CellKind.SIGNIFICANT, digits)
+    below = format_cell(value.standard_error, CellKind.SIGNIFICANT, max(digits - 1, 1))
+    return f"{above}\n({below})"
 
 
 def _number(value: object, kind: CellKind) -> float:

@@ -73,6 +73,12 @@ def _table(name: str, caption: str, rows: Sequence[EstimateRow], notes: tuple[st
             Column(f"{kind}_se", f"SE, {words}", CellKind.SIGNIFICANT, 3),
             Column(f"{kind}_p", f"p, {words}", CellKind.P_VALUE, 3),
         ]
+    remarks: dict[tuple[str, str], dict[str, None]] = {(row.part, row.term): {} for row in rows}
+    for noting in rows:
+        remarks[noting.part, noting.term] |= {noting.note: None} if noting.note else {}
+    noted = any(remarks.values())
+    if noted:
+        columns.append(Column("note", "Note", CellKind.TEXT))
     by_kind = {(row.part, row.term, row.se_kind): row for row in rows}
     first = {(row.part, row.term): row for row in reversed(rows)}
     lines: list[tuple[Cell, ...]] = []
@@ -81,5 +87,7 @@ def _table(name: str, caption: str, rows: Sequence[EstimateRow], notes: tuple[st
         for kind in kinds:
             row = by_kind.get((part, term, kind))
             cells += [row.se, row.p_value] if row else [None, None]
+        if noted:
+            cells.append("; ".join(remarks[part, term]))
         lines.append(tuple(cells))
     return Table(name, caption, tuple(columns), tuple(lines), notes)

@@ -1,24 +1,25 @@
-"""In sample against out of sample, one footing at a time."""
+"""In sample against out of sample, one footing at a time, by the score that fits the footing."""
 
 import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from steelyard.reports.facts import FootingSheet, ReportFacts
 from steelyard.reports.frames import CandidateRow, CriterionRow, RunTables
-from steelyard.reports.pooling import LOG_SCORE, PooledScore
+from steelyard.reports.pooling import LOG_SCORE, RMSE, PooledScore
 
-__all__ = ["Comparison", "Entry", "Swap", "compare"]
-
-NO_FOOTING = "no likelihood footing (mean only)"
+__all__ = ["Comparison", "Entry", "Standing", "Swap", "compare"]
 
 
 @dataclass(frozen=True)
 class Entry:
-    """One candidate on one footing: its AIC and its pooled out-of-sample log score, where it has them."""
+    """One candidate on one footing: its AIC and its pooled out-of-sample score, where it has them."""
 
     candidate: str
     family: str
+    links: str
+    weights: str
     information: str
     n_parameters: float
     converged: bool | None
@@ -30,30 +31,63 @@ class Entry:
 
     @property
     def held_out_rank(self) -> int | None:
-        """Place by the out-of-sample log score; None where it is not scored or not on all folds."""
+        """Place by the out-of-sample score; None where it is not scored or not on all folds."""
         return self.held_out.rank if self.held_out else None
 
     @property
     def is_impossible(self) -> bool:
-        """Whether a held-out dyad had probability zero, which makes the log score infinite."""
+        """Whether the score is infinite, as a log score is when a held-out dyad had probability zero."""
         return self.held_out is not None and math.isinf(self.held_out.value)
 
 
 @dataclass(frozen=True)
 class Swap:
-    """Two candidates that AIC orders one way and the out-of-sample log score the other."""
+    """Two candidates that AIC orders one way and the out-of-sample score the other."""
 
     ahead_in_sample: str
     ahead_held_out: str
 
 
 @dataclass(frozen=True)
-class Comparison:
-    """All candidates on one footing, scored under one validation scheme ("" where nothing was scored)."""
+class Standing:
+    """Candidates that share a place, and the part of their law that makes them ("" where none does)."""
 
-    footing: str
-    scheme: str
+    rank: int
     entries: tuple[Entry, ...]
+    shared: str
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The candidates' labels."""
+        return tuple(entry.candidate for entry in self.entries)
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """All candidates on one footing, scored under one validation scheme ("" where nothing was scored).
+
+    `score` is the score that ranks them out of sample: the log score where any of them has one.
+    """
+
+    sheet: FootingSheet
+    scheme: str
+    score: str
+    entries: tuple[Entry, ...]
+
+    @property
+    def footing(self) -> str:
+        """The footing as tables write it."""
+        return self.sheet.text
+
+    @property
+    def has_criteria(self) -> bool:
+        """Whether any candidate has an AIC here."""
+        return any(entry.aic_rank is not None for entry in self.entries)
+
+    @property
+    def is_alone(self) -> bool:
+        """Whether there is a single candidate, so that nothing can be ranked."""
+        return len(self.entries) == 1
 
     @property
     def ranked_twice(self) -> tuple[Entry, ...]:
@@ -84,64 +118,75 @@ class Comparison:
         )
 
     def by_aic(self) -> tuple[Entry, ...]:
-        """Entries with an AIC, best first."""
-        return tuple(
-            sorted(
-                (e for e in self.entries if e.aic_rank is not None), key=lambda e: (e.aic_rank, e.candidate)
-            )
-        )
+        """Entries with an AIC, best first; ties in the order of the study."""
+        ranked = [entry for entry in self.entries if entry.aic_rank is not None]
+        return tuple(sorted(ranked, key=lambda entry: entry.aic_rank or 0))
 
     def by_held_out(self) -> tuple[Entry, ...]:
-        """Entries ranked out of sample, best first; ties (all infinite scores) in the order of AIC."""
+        """Entries ranked out of sample, best first; ties (all infinite scores) by AIC, then as in the study."""
         ranked = [entry for entry in self.entries if entry.held_out_rank is not None]
-        return tuple(sorted(ranked, key=lambda e: (e.held_out_rank, e.aic_rank or math.inf, e.candidate)))
+        return tuple(sorted(ranked, key=lambda entry: (entry.held_out_rank, entry.aic_rank or math.inf)))
+
+    def in_sample(self) -> tuple[Standing, ...]:
+        """Places by AIC, best first."""
+        return _standings([(entry.aic_rank, entry) for entry in self.by_aic()])
+
+    def held_out(self) -> tuple[Standing, ...]:
+        """Places out of sample, best first."""
+        return _standings([(entry.held_out_rank, entry) for entry in self.by_held_out()])
 
     def unranked(self) -> tuple[tuple[Entry, str], ...]:
         """Entries without a place out of sample, each with the reason."""
         return tuple(
-            (entry, _why_unranked(entry))
+            (entry, _why_unranked(entry, self.score))
             for entry in self.entries
             if self.scheme and entry.held_out_rank is None
         )
 
 
-def compare(tables: RunTables, pooled: Sequence[PooledScore]) -> tuple[Comparison, ...]:
-    """Set AIC beside the out-of-sample log score for every footing and every scheme on it.
+def compare(tables: RunTables, pooled: Sequence[PooledScore], facts: ReportFacts) -> tuple[Comparison, ...]:
+    """Set AIC beside the out-of-sample score for every footing and every scheme on it.
 
     Parameters
     ----------
     tables : the tables of a run
     pooled : its pooled scores
+    facts : names the footings and orders them
 
     Returns
     -------
-    tuple of comparisons, footings in the order of `criteria`, then of `scores`
+    tuple of comparisons: footings in reading order, those that no sheet names in the order of the tables
     """
     aic = [row for row in tables.criteria if row.criterion == "aic"]
-    log_scores = [item for item in pooled if item.score == LOG_SCORE]
     footings = list(dict.fromkeys([row.footing for row in aic] + [item.footing for item in pooled]))
     comparisons = []
-    for footing in footings:
+    for footing in sorted(footings, key=facts.footing_place):
         schemes = list(dict.fromkeys(item.scheme for item in pooled if item.footing == footing)) or [""]
         criteria = [row for row in aic if row.footing == footing]
         for scheme in schemes:
-            scores = [item for item in log_scores if (item.footing, item.scheme) == (footing, scheme)]
-            others = [item.candidate for item in pooled if (item.footing, item.scheme) == (footing, scheme)]
-            entries = _entries(tables.candidates, criteria, scores, others)
-            comparisons.append(Comparison(footing, scheme, entries))
+            scores = [item for item in pooled if (item.footing, item.scheme) == (footing, scheme)]
+            score = _deciding_score(scores)
+            entries = _entries(tables.candidates, criteria, scores, score)
+            comparisons.append(Comparison(facts.footing(footing), scheme, score, entries))
     return tuple(comparisons)
+
+
+def _deciding_score(scores: Sequence[PooledScore]) -> str:
+    """The log score where there is one, else RMSE, else whatever came first."""
+    present = list(dict.fromkeys(item.score for item in scores))
+    return next((score for score in (LOG_SCORE, RMSE, *present) if score in present), LOG_SCORE)
 
 
 def _entries(
     candidates: Sequence[CandidateRow],
     criteria: Sequence[CriterionRow],
     scores: Sequence[PooledScore],
-    others: Sequence[str],
+    score: str,
 ) -> tuple[Entry, ...]:
     known = {row.candidate: row for row in candidates}
     aic = {row.candidate: row for row in criteria}
-    held_out = {item.candidate: item for item in scores}
-    present = dict.fromkeys([*aic, *held_out, *others])
+    held_out = {item.candidate: item for item in scores if item.score == score}
+    present = dict.fromkeys([*aic, *(item.candidate for item in scores)])
     ordered = [name for name in known if name in present] + [name for name in present if name not in known]
     return tuple(_entry(name, known.get(name), aic.get(name), held_out.get(name)) for name in ordered)
 
@@ -152,6 +197,8 @@ def _entry(
     return Entry(
         candidate=name,
         family=row.family if row else "",
+        links=row.links if row else "",
+        weights=row.weights if row else "",
         information=row.information if row else "",
         n_parameters=row.n_parameters if row else math.nan,
         converged=row.converged if row else None,
@@ -163,13 +210,31 @@ def _entry(
     )
 
 
+def _standings(ranked: Sequence[tuple[int | None, Entry]]) -> tuple[Standing, ...]:
+    groups: dict[int, list[Entry]] = {}
+    for rank, entry in ranked:
+        groups.setdefault(rank or 0, []).append(entry)
+    return tuple(Standing(rank, tuple(group), _shared_part(group)) for rank, group in groups.items())
+
+
+def _shared_part(entries: Sequence[Entry]) -> str:
+    """The one part that tied candidates have in common, if it is one part."""
+    links = {entry.links for entry in entries}
+    weights = {entry.weights for entry in entries}
+    if len(entries) > 1 and len(links) > 1 and len(weights) == 1 and weights != {""}:
+        return "weights law"
+    if len(entries) > 1 and len(weights) > 1 and len(links) == 1 and links != {""}:
+        return "links law"
+    return ""
+
+
 def _strictly(one: int | None, two: int | None) -> bool:
     return one is not None and two is not None and one < two
 
 
-def _why_unranked(entry: Entry) -> str:
+def _why_unranked(entry: Entry, score: str) -> str:
     if entry.held_out is None:
-        return "no log score"
+        return f"no {score.replace('_', ' ')}"
     if not entry.held_out.complete:
         held_out = entry.held_out
         if held_out.n_folds == held_out.n_folds_expected:

@@ -5,6 +5,7 @@ import statistics
 from dataclasses import dataclass
 
 from matplotlib.axes import Axes
+from matplotlib.ticker import MaxNLocator
 
 from steelyard.reports.cells import CellKind, format_cell
 from steelyard.reports.comparing import Entry
@@ -51,8 +52,8 @@ def scale_limits(scores: list[PooledScore]) -> tuple[float, float]:
     return (low - room, high + room)
 
 
-def draw_dots(axes: Axes, panel: DotPanel, *, show_names: bool) -> None:
-    """Draw a panel; names of candidates at its left where `show_names`."""
+def draw_dots(axes: Axes, panel: DotPanel, *, show_names: bool, ticks: int) -> None:
+    """Draw a panel with about so many ticks; names of candidates at its left where `show_names`."""
     present = [item for _, item in panel.rows if item is not None]
     low, high = scale_limits(present)
     has_edge = any(math.isinf(item.value) for item in present)
@@ -67,12 +68,10 @@ def draw_dots(axes: Axes, panel: DotPanel, *, show_names: bool) -> None:
             _draw_finite(axes, entry, item, index, (low, high))
         else:
             _draw_off_scale(axes, entry, item, index, (low, high))
+    places = MaxNLocator(nbins=ticks, steps=[1, 2, 5, 10]).tick_values(low, high)
+    axes.set_xticks([place for place in places if low <= place <= high])
     if has_edge:
         axes.axvline(high, color=QUIET, linewidth=0.6)
-        ticks = [
-            tick for tick in axes.xaxis.get_major_locator().tick_values(low, high) if low <= tick <= high
-        ]
-        axes.set_xticks(ticks)
     axes.set_xlim(low, edge)
     axes.set_ylim(len(panel.rows) - 0.4, -0.6)
     names = [entry.candidate for entry, _ in panel.rows]

@@ -1,36 +1,42 @@
 """The figures of a report: rank change, and scores candidate by candidate."""
 
+import math
 import re
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Sequence, Set
 
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
-from steelyard.reports.canvas import Drawing, blank_figure, drawing_style, set_title
+from steelyard.reports.canvas import Drawing, arrange, blank_figure, drawing_style, set_title
 from steelyard.reports.cells import NO_VALUE
 from steelyard.reports.comparing import Comparison, Entry
 from steelyard.reports.dots import DotPanel, draw_dots, draw_marker
 from steelyard.reports.palette import FAINT, INK, QUIET, family_mark
-from steelyard.reports.pooling import LOG_SCORE, PooledScore
+from steelyard.reports.pooling import BRIER, LOG_SCORE, RMSE, PooledScore
 from steelyard.reports.wording import (
     finding,
-    footing_title,
     held_out_phrase,
+    label_list,
     listing,
     score_title,
     short_labels,
 )
 
-__all__ = ["comparison_drawings", "figure_key"]
+__all__ = ["FIGURE_NAMES", "comparison_drawings", "figure_key"]
 
+# Every figure's file name starts with one of these.
+FIGURE_NAMES = ("ranks", "scores")
 _ROW = 0.235
+_LEGEND = 0.3
+_PANELS = (LOG_SCORE, BRIER, RMSE)
 
 
-def figure_key(footing: str, scheme: str) -> str:
-    """A file name's part for a footing and a scheme: lower-case letters, digits and hyphens."""
-    words = re.sub(r"[^a-z0-9]+", "-", f"{footing_title(footing)} {scheme}".lower())
+def figure_key(title: str, scheme: str) -> str:
+    """A file name's part for a footing's title and a scheme: lower-case letters, digits and hyphens."""
+    plain = re.sub(r"\([^)]*\)", "", title)
+    words = re.sub(r"[^a-z0-9]+", "-", f"{plain} {scheme}".lower())
     return words.strip("-")
 
 
@@ -47,32 +53,33 @@ def comparison_drawings(
 
     Returns
     -------
-    tuple of drawings: rank change (where two or more candidates are ranked both ways), log score (where
-    there is one), link Brier score and RMSE in one figure (where there is either)
+    tuple of drawings: rank change (where three or more candidates are ranked both ways; of two a sentence
+    tells as much), and scores (where two or more candidates differ in any)
     """
     scores = [
-        item for item in pooled if (item.footing, item.scheme) == (comparison.footing, comparison.scheme)
+        item
+        for item in pooled
+        if (item.footing, item.scheme) == (comparison.footing, comparison.scheme) and item.score in _PANELS
     ]
+    by_score = [[item for item in scores if item.score == score] for score in _PANELS]
+    panels = [items for items in by_score if items]
     drawings = []
     with drawing_style():
-        if comparison.n_pairs:
+        if len(comparison.ranked_twice) > 2:
             drawings.append(_rank_change(comparison, f"ranks-{key}"))
-        log_scores = [item for item in scores if item.score == LOG_SCORE]
-        if log_scores:
-            drawings.append(_log_score(comparison, log_scores, f"log-score-{key}"))
-        others = [item for item in scores if item.score in ("brier", "rmse")]
-        if others:
-            drawings.append(_other_scores(comparison, others, f"brier-rmse-{key}"))
+        if any(len({(item.rank, item.complete) for item in items}) > 1 for items in panels):
+            drawings.append(_scores(comparison, panels, f"scores-{key}"))
     return tuple(drawings)
 
 
 def _rank_change(comparison: Comparison, name: str) -> Drawing:
-    """Slope figure: places by AIC on the left, by the out-of-sample log score on the right."""
+    """Slope figure: places by AIC on the left, by the out-of-sample score on the right."""
     title = finding(comparison)
     n_entries = len(comparison.entries)
-    figure = blank_figure(1.35 + _ROW * max(n_entries, 3))
+    figure = blank_figure(1.45 + _ROW * max(n_entries, 3))
     held_out = held_out_phrase(comparison.scheme)
-    set_title(figure, title, f"{footing_title(comparison.footing)}; places from best (top) to worst")
+    score = score_title(comparison.score, unit=False)
+    top = set_title(figure, title, f"{comparison.sheet.title}; places from best (top) to worst")
     axes = figure.subplots()
     left = list(comparison.by_aic())
     left += [entry for entry in comparison.entries if entry.aic_rank is None]
@@ -84,16 +91,17 @@ def _rank_change(comparison: Comparison, name: str) -> Drawing:
     _end_labels(axes, left, [f"{labels[e.candidate]}  {_place(e.aic_rank)}" for e in left])
     twin = axes.twinx()
     _end_labels(twin, right, [_right_label(e, labels[e.candidate], reasons) for e in right])
-    axes.set_xticks([0, 1], ["AIC, in sample", f"log score,\n{held_out}"])
+    axes.set_xticks([0, 1], ["AIC, in sample", f"{score},\n{held_out}"])
     axes.xaxis.tick_top()
     for end in (0, 1):
         axes.axvline(end, color=FAINT, linewidth=0.8, zorder=1)
     _family_legend(figure, comparison.entries)
+    arrange(figure, [[axes, twin]], top=top, bottom=_LEGEND)
     reading = (
-        f"Left: places by AIC. Right: places by the mean log score on {held_out}. Coloured lines belong to "
+        f"Left: places by AIC. Right: places by the {score} on {held_out}. Coloured lines belong to "
         "candidates that change order with others, the heavier the more; thin grey ones keep their "
         "order against all others. "
-        "Open markers: an infinite log score; dotted lines: not ranked on one side."
+        "Open markers: an infinite score; dotted lines: not ranked on one side."
     )
     return Drawing(name, title, reading, figure)
 
@@ -141,64 +149,57 @@ def _right_label(entry: Entry, label: str, reasons: dict[str, str]) -> str:
     return f"{_place(entry.held_out_rank)}  {label}"
 
 
-def _log_score(comparison: Comparison, scores: Sequence[PooledScore], name: str) -> Drawing:
-    best = next((entry for entry in comparison.by_held_out()), None)
-    n_impossible = sum(entry.is_impossible for entry in comparison.entries)
-    lead = (
-        f"{best.candidate} has the lowest log score on {held_out_phrase(comparison.scheme)}"
-        if best and not best.is_impossible
-        else f"Log scores on {held_out_phrase(comparison.scheme)}"
-    )
-    tail = (
-        ""
-        if not n_impossible
-        else f"; {n_impossible} of {len(comparison.entries)} met impossible observations"
-    )
-    figure = blank_figure(1.9 + _ROW * max(len(scores), 3))
-    reading = _reading(scores)
-    set_title(figure, lead + tail, footing_title(comparison.footing))
-    axes = figure.subplots()
-    draw_dots(axes, DotPanel(_axis_title(scores), _in_order(comparison, scores)), show_names=True)
-    _family_legend(figure, comparison.entries)
-    return Drawing(name, lead + tail, reading, figure)
-
-
-def _other_scores(comparison: Comparison, scores: Sequence[PooledScore], name: str) -> Drawing:
-    panels = []
-    leaders: dict[str, list[str]] = {}
-    names = list(dict.fromkeys(entry.candidate for entry in comparison.entries))
-    for score in ("brier", "rmse"):
-        chosen = [item for item in scores if item.score == score]
-        if chosen:
-            panels.append(DotPanel(_axis_title(chosen), _in_order(comparison, chosen)))
-            first = [item.candidate for item in chosen if item.rank == 1]
-            if len(first) == 1:
-                leaders.setdefault(first[0], []).append(score_title(score, unit=False))
-    led = [f"{name} has the lowest {listing(titles)}" for name, titles in leaders.items()]
-    title = "; ".join(led) or "No single candidate leads"
-    figure = blank_figure(1.95 + _ROW * max(len(names), 3))
-    set_title(figure, title, f"{footing_title(comparison.footing)}; on {held_out_phrase(comparison.scheme)}")
-    for index, panel in enumerate(panels):
+def _scores(comparison: Comparison, panels: Sequence[Sequence[PooledScore]], name: str) -> Drawing:
+    """Dot figure: one panel a score, candidates in one order."""
+    title = _score_finding(comparison, panels)
+    names = {item.candidate for items in panels for item in items}
+    figure = blank_figure((1.8 if len(panels) > 1 else 1.5) + _ROW * max(len(names), 3))
+    subtitle = f"{comparison.sheet.title}; on {held_out_phrase(comparison.scheme)}"
+    top = set_title(figure, title, subtitle)
+    placed = []
+    for index, items in enumerate(panels):
         axes = figure.add_subplot(1, len(panels), index + 1)
-        draw_dots(axes, panel, show_names=index == 0)
+        panel = DotPanel(_axis_title(items, narrow=len(panels) > 1), _in_order(comparison, items, names))
+        draw_dots(axes, panel, show_names=index == 0, ticks=7 // len(panels))
+        placed.append([axes])
     _family_legend(figure, comparison.entries)
-    return Drawing(name, title, _reading(scores), figure)
+    arrange(figure, placed, top=top, bottom=_LEGEND)
+    return Drawing(name, title, _reading([item for items in panels for item in items]), figure)
+
+
+def _score_finding(comparison: Comparison, panels: Sequence[Sequence[PooledScore]]) -> str:
+    leaders: dict[tuple[str, ...], list[str]] = {}
+    for items in panels:
+        ahead = {item.candidate for item in items if item.rank == 1 and math.isfinite(item.value)}
+        first = tuple(entry.candidate for entry in comparison.entries if entry.candidate in ahead)
+        if first:
+            leaders.setdefault(first, []).append(score_title(items[0].score, unit=False))
+    led = []
+    for names, titles in leaders.items():
+        verb = "has" if len(names) == 1 else "have"
+        best = "lowest" if all(items[0].better != "higher" for items in panels) else "best"
+        led.append(f"{label_list(names, 3)} {verb} the {best} {listing(titles)}")
+    n_impossible = sum(entry.is_impossible for entry in comparison.entries)
+    if n_impossible:
+        led.append(f"{n_impossible} of {len(comparison.entries)} met impossible observations")
+    return "; ".join(led) or "No candidate leads"
 
 
 def _in_order(
-    comparison: Comparison, scores: Sequence[PooledScore]
+    comparison: Comparison, scores: Sequence[PooledScore], wanted: Set[str]
 ) -> tuple[tuple[Entry, PooledScore | None], ...]:
-    """Candidates from best to worst log score, the order all score figures of a comparison share."""
+    """Candidates from best to worst, the order that all panels share."""
     by_name = {item.candidate: item for item in scores}
     ordered = list(comparison.by_held_out())
     ordered += [entry for entry in comparison.entries if entry not in ordered]
-    wanted = {item.candidate for item in scores} | {e.candidate for e in ordered if e.held_out is not None}
     return tuple((e, by_name.get(e.candidate)) for e in ordered if e.candidate in wanted)
 
 
-def _axis_title(scores: Sequence[PooledScore]) -> str:
-    title = score_title(scores[0].score).replace(" (", "\n(")
-    return f"{title}\n{scores[0].better} is better"
+def _axis_title(scores: Sequence[PooledScore], *, narrow: bool) -> str:
+    title = score_title(scores[0].score)
+    if narrow:
+        return title.replace(" (", "\n(") + f"\n{scores[0].better} is better"
+    return f"{title}, {scores[0].better} is better"
 
 
 def _reading(scores: Sequence[PooledScore]) -> str:
@@ -218,6 +219,6 @@ def _family_legend(figure: Figure, entries: Sequence[Entry]) -> None:
         for mark in marks
     ]
     figure.legend(
-        handles=handles, loc="outside lower left", ncols=4, frameon=False, fontsize=8.5, labelcolor=INK,
-        handletextpad=0.2, borderaxespad=0.1,
+        handles=handles, loc="lower left", bbox_to_anchor=(0.0, 0.0), ncols=4, frameon=False, fontsize=8.5,
+        labelcolor=INK, handletextpad=0.2, borderaxespad=0.1,
     )  # fmt: skip

@@ -77,6 +77,7 @@ class EstimateRow:
     p_value: float
     lower: float
     upper: float
+    note: str = ""
 
     @property
     def is_node(self) -> bool:
@@ -147,7 +148,11 @@ def _rows(tables: Mapping[str, pd.DataFrame], name: str, row_type: type[Row]) ->
     frame = tables.get(name)
     if frame is None:
         return ()
-    fields = dataclasses.fields(row_type)
+    fields = [
+        field
+        for field in dataclasses.fields(row_type)
+        if field.name in frame.columns or field.default is dataclasses.MISSING
+    ]
     lacking = [field.name for field in fields if field.name not in frame.columns]
     if lacking:
         raise ReportError(

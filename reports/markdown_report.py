@@ -1,6 +1,5 @@
 """The report as one Markdown file, figures beside it."""
 
-from steelyard.reports.coefficients import CandidateEstimates
 from steelyard.reports.document import ComparisonSection, Document
 from steelyard.reports.facts import MethodSheet
 from steelyard.reports.markdown import escape_markdown, escape_paragraph, render_markdown
@@ -14,17 +13,17 @@ def render_markdown_report(document: Document) -> str:
     blocks = [f"# {escape_markdown(facts.title)}", *map(escape_paragraph, document.compared)]
     blocks += _pairs(facts.data)
     blocks.append("## Verdict")
-    for section in document.sections:
-        blocks += [f"### {escape_markdown(_heading(section))}", *map(escape_paragraph, section.verdict)]
+    blocks += _answers(document)
     blocks.append("## Cautions")
     blocks.append(
         render_markdown(document.warnings) if document.warnings.rows else "Every fit is certified and scored."
     )
+    blocks.append(document.outcome)
     blocks += _bullets(document.cautions)
     for section in document.sections:
         blocks += _section(section)
     blocks += ["## Candidates", render_markdown(document.candidates)]
-    blocks += _estimates(document.estimates)
+    blocks += _estimates(document)
     blocks += _methods(facts.methods)
     if facts.provenance:
         blocks += ["## Provenance", *_pairs(facts.provenance)]
@@ -46,7 +45,10 @@ def _pairs(pairs: tuple[tuple[str, str], ...]) -> list[str]:
 
 
 def _section(section: ComparisonSection) -> list[str]:
-    blocks = [f"## {escape_markdown(_heading(section))}", render_markdown(section.ranking)]
+    sheet = section.comparison.sheet
+    under = [text for text in (sheet.purpose, sheet.text if sheet.text != sheet.title else "") if text]
+    blocks = [f"## {escape_markdown(_heading(section))}", *map(escape_paragraph, under)]
+    blocks += [*map(escape_paragraph, section.verdict), render_markdown(section.ranking)]
     for drawing in section.drawings:
         blocks += [
             f"![{escape_markdown(drawing.finding)}](figures/{drawing.name}.svg)",
@@ -56,9 +58,26 @@ def _section(section: ComparisonSection) -> list[str]:
     return blocks
 
 
-def _estimates(estimates: tuple[CandidateEstimates, ...]) -> list[str]:
-    blocks = ["## Estimates"] if estimates else []
-    for item in estimates:
+def _answers(document: Document) -> list[str]:
+    """One line a footing, who leads on either side and whether they agree."""
+    lines = []
+    for _, answer in document.answers:
+        sides = [
+            f"{where} ({lead.by}) {lead.text}"
+            for where, lead in (("in sample", answer.in_sample), ("out of sample", answer.out_of_sample))
+            if lead
+        ]
+        where = f", {answer.held_out}" if answer.held_out else ""
+        text = f"{answer.title}{where}: {'; '.join([*sides, answer.agreement])}."
+        lines.append(" ".join([text, *answer.remarks]))
+    alone = [escape_paragraph(document.alone)] if document.alone else []
+    return [*_bullets(tuple(lines)), *alone] or ["There is nothing to rank."]
+
+
+def _estimates(document: Document) -> list[str]:
+    blocks = ["## Estimates"] if document.estimates else []
+    blocks += [render_markdown(table) for table in document.side_by_side]
+    for item in document.estimates:
         blocks.append(f"### {escape_markdown(item.candidate)}")
         if item.coefficients:
             blocks.append(render_markdown(item.coefficients))

@@ -7,10 +7,13 @@ from dataclasses import dataclass, replace
 
 from steelyard.reports.frames import ScoreRow
 
-__all__ = ["PooledScore", "pool_scores"]
+__all__ = ["BRIER", "LOG_SCORE", "RMSE", "PooledScore", "pool_scores"]
 
 LOG_SCORE = "log_score"
-_ROOT_MEAN_SQUARE = "rmse"
+BRIER = "brier"
+RMSE = "rmse"
+# Candidates that share a part score alike but for rounding; closer than this is a tie.
+_TIE = 1e-12
 
 
 @dataclass(frozen=True)
@@ -78,7 +81,7 @@ def _pool(folds: list[ScoreRow], n_expected: int, complete: bool) -> PooledScore
     first = folds[0]
     values = [row.value for row in folds]
     sizes = [row.n_dyads or 0 for row in folds]
-    if first.score == _ROOT_MEAN_SQUARE:
+    if first.score == RMSE:
         value = math.sqrt(_weighted_mean([item**2 for item in values], sizes))
     else:
         value = _weighted_mean(values, sizes)
@@ -107,7 +110,7 @@ def _weighted_mean(values: list[float], sizes: list[int]) -> float:
 
 
 def _ranked(pooled: list[PooledScore]) -> list[PooledScore]:
-    """Rank complete candidates, equal scores (infinities among them) sharing the better place."""
+    """Rank complete candidates, scores equal to 1e-12 (infinities among them) sharing the better place."""
     keys = [
         (item.value if item.better != "higher" else -item.value)
         for item in pooled
@@ -117,6 +120,12 @@ def _ranked(pooled: list[PooledScore]) -> list[PooledScore]:
     for item in pooled:
         if item.complete and not math.isnan(item.value):
             key = item.value if item.better != "higher" else -item.value
-            item = replace(item, rank=1 + sum(other < key for other in keys))
+            item = replace(item, rank=1 + sum(_is_less(other, key) for other in keys))
         ranked.append(item)
     return ranked
+
+
+def _is_less(one: float, two: float) -> bool:
+    if math.isinf(one) or math.isinf(two):
+        return one < two
+    return one < two - _TIE * max(abs(one), abs(two))

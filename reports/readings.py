@@ -1,24 +1,23 @@
 """Reading tables: what a person looks at, made from rows, pooled scores and comparisons."""
 
 import math
-from collections import Counter
 from collections.abc import Sequence
 
 from steelyard.reports.comparing import Comparison, Entry
-from steelyard.reports.frames import CandidateRow, CriterionRow, OutcomeRow
+from steelyard.reports.facts import FootingSheet, ReportFacts
+from steelyard.reports.frames import CandidateRow, CriterionRow
 from steelyard.reports.pooling import LOG_SCORE, PooledScore
 from steelyard.reports.tables import Cell, CellKind, Column, Missing, Table
-from steelyard.reports.wording import count, footing_title, held_out_phrase, listing, score_title
+from steelyard.reports.wording import held_out_phrase, label_list, score_title
 
-__all__ = ["candidate_table", "criteria_table", "ranking_table", "score_table", "warning_table"]
+__all__ = ["candidate_table", "criteria_table", "ranking_table", "score_table"]
 
 _CANDIDATE = Column("candidate", "Candidate", CellKind.TEXT)
-_OUTCOMES = {"failed": "failed", "not_applicable": "not applicable"}
 _CRITERIA = ("aic", "aicc", "bic", "hqic")
 _CRITERION_TITLES = ("AIC", "AICc", "BIC", "HQIC")
 
 
-def candidate_table(candidates: Sequence[CandidateRow]) -> Table:
+def candidate_table(candidates: Sequence[CandidateRow], facts: ReportFacts) -> Table:
     """What was fitted; no likelihoods, because the rows stand on different footings."""
     columns = (
         _CANDIDATE,
@@ -41,7 +40,7 @@ def candidate_table(candidates: Sequence[CandidateRow]) -> Table:
             _whole(row.n_parameters),
             row.converged,
             row.residual,
-            footing_title(row.footing),
+            facts.footing(row.footing).title,
         )
         for row in candidates
     )
@@ -53,63 +52,86 @@ def candidate_table(candidates: Sequence[CandidateRow]) -> Table:
     return Table("candidates", "Candidates as fitted to all dyads", columns, rows, notes)
 
 
-_IN_SAMPLE = (
+_WHO = (
     _CANDIDATE,
     Column("family", "Family", CellKind.TEXT),
     Column("information", "Is told", CellKind.TEXT),
+)
+_IN_SAMPLE = (
     Column("n_parameters", "Parameters", CellKind.SIGNIFICANT, 4),
     Column("aic", "AIC", CellKind.DECIMAL, 1),
     Column("aic_delta", "AIC above the best", CellKind.DECIMAL, 1),
     Column("aic_rank", "Place by AIC", CellKind.INTEGER),
 )
-_HELD_OUT = (
-    Column("log_score", "Log score, out of sample", CellKind.DECIMAL, 4),
-    Column("lowest", "Lowest fold", CellKind.DECIMAL, 4),
-    Column("highest", "Highest fold", CellKind.DECIMAL, 4),
-    Column("n_impossible", "Impossible dyads", CellKind.INTEGER),
-    Column("held_out_rank", "Place by log score", CellKind.INTEGER),
-)
+
+
+def _held_out_columns(score: str) -> tuple[Column, ...]:
+    kind = CellKind.DECIMAL if score == LOG_SCORE else CellKind.SIGNIFICANT
+    title = score_title(score, unit=False)
+    columns = [
+        Column(score, f"{_sentence_case(title)}, out of sample", kind, 4),
+        Column("lowest", "Lowest fold", kind, 4),
+        Column("highest", "Highest fold", kind, 4),
+    ]
+    if score == LOG_SCORE:
+        columns.append(Column("n_impossible", "Impossible dyads", CellKind.INTEGER))
+    return (*columns, Column("held_out_rank", f"Place by {title}", CellKind.INTEGER))
 
 
 def ranking_table(comparison: Comparison, key: str) -> Table:
     """In sample and out of sample side by side, on one footing under one scheme, best by AIC first.
 
-    Where nothing was scored, the in-sample half alone.
+    A half that has nothing to show is left out; without the in-sample half, best out of sample first.
     """
+    ranked = comparison.by_aic() or comparison.by_held_out()
+    placed = {entry.candidate for entry in ranked}
+    ordered = [*ranked, *(entry for entry in comparison.entries if entry.candidate not in placed)]
+    columns, caption = list(_WHO), []
+    if comparison.has_criteria:
+        columns += _IN_SAMPLE
+        caption.append("in sample")
+    if comparison.scheme:
+        columns += _held_out_columns(comparison.score)
+        caption.append("out of sample")
     reasons = {entry.candidate: reason for entry, reason in comparison.unranked()}
-    ordered = [*comparison.by_aic(), *(entry for entry in comparison.entries if entry.aic_rank is None)]
-    uncertified = [entry.candidate for entry in ordered if entry.converged is False]
-    doubt = (f"Fit not certified, so its numbers may move: {listing(uncertified)}.",) if uncertified else ()
-    name = f"ranking-{key}"
-    if not comparison.scheme:
-        rows = tuple(_in_sample_cells(entry) for entry in ordered)
-        return Table(name, f"In sample: {footing_title(comparison.footing)}", _IN_SAMPLE, rows, doubt)
-    held_out = held_out_phrase(comparison.scheme)
-    rows = tuple(
-        _in_sample_cells(entry) + _held_out_cells(entry, reasons.get(entry.candidate, ""))
-        for entry in ordered
-    )
-    notes = (
-        f"Log score: mean negative log density over {held_out}, in nats per dyad; lower is better.",
-        "Lowest and highest fold are a range of folds, not a standard error.",
-        "An impossible dyad is a held-out observation to which the candidate gives no probability; "
-        "one makes the log score infinite.",
-    )
-    caption = f"In sample and out of sample: {footing_title(comparison.footing)}, {held_out}"
-    return Table(name, caption, _IN_SAMPLE + _HELD_OUT, rows, doubt + notes)
+    rows = []
+    for entry in ordered:
+        cells: list[Cell] = [entry.candidate, entry.family or None, entry.information or None]
+        if comparison.has_criteria:
+            cells += [_whole(entry.n_parameters), entry.aic, entry.aic_delta, entry.aic_rank]
+        if comparison.scheme:
+            cells += _held_out_cells(entry, reasons.get(entry.candidate, ""), comparison.score)
+        rows.append(tuple(cells))
+    held_out = f" ({held_out_phrase(comparison.scheme)})" if comparison.scheme else ""
+    title = f"{_sentence_case(' and '.join(caption))}{held_out}: {comparison.sheet.title}"
+    return Table(f"ranking-{key}", title, tuple(columns), tuple(rows), _ranking_notes(comparison))
 
 
-def _in_sample_cells(entry: Entry) -> tuple[Cell, ...]:
-    who = (entry.candidate, entry.family or None, entry.information or None, _whole(entry.n_parameters))
-    return (*who, entry.aic, entry.aic_delta, entry.aic_rank)
+def _ranking_notes(comparison: Comparison) -> tuple[str, ...]:
+    doubtful = [entry.candidate for entry in comparison.entries if entry.converged is False]
+    notes = [f"Fit not certified, so its numbers may move: {label_list(doubtful)}."] if doubtful else []
+    if comparison.scheme:
+        held_out = held_out_phrase(comparison.scheme)
+        notes.append(
+            f"Log score: mean negative log density over {held_out}, in nats per dyad; lower is better."
+            if comparison.score == LOG_SCORE
+            else f"{_sentence_case(score_title(comparison.score))}, over {held_out}."
+        )
+        notes.append("Lowest and highest fold are a range of folds, not a standard error.")
+    if comparison.scheme and comparison.score == LOG_SCORE:
+        notes.append(
+            "An impossible dyad is a held-out observation to which the candidate gives no probability; "
+            "one makes the log score infinite."
+        )
+    return tuple(notes)
 
 
-def _held_out_cells(entry: Entry, reason: str) -> tuple[Cell, ...]:
-    score = entry.held_out
+def _held_out_cells(entry: Entry, reason: str, score: str) -> list[Cell]:
+    item = entry.held_out
     place = Missing(reason) if entry.held_out_rank is None else entry.held_out_rank
-    if score is None:
-        return (None, None, None, None, place)
-    return (score.value, score.lowest, score.highest, score.n_impossible, place)
+    impossible: list[Cell] = [item.n_impossible if item else None] if score == LOG_SCORE else []
+    values: list[Cell] = [item.value, item.lowest, item.highest] if item else [None] * 3
+    return [*values, *impossible, place]
 
 
 def score_table(comparison: Comparison, pooled: Sequence[PooledScore], key: str) -> Table | None:
@@ -117,7 +139,8 @@ def score_table(comparison: Comparison, pooled: Sequence[PooledScore], key: str)
     chosen = [
         item
         for item in pooled
-        if (item.footing, item.scheme) == (comparison.footing, comparison.scheme) and item.score != LOG_SCORE
+        if (item.footing, item.scheme) == (comparison.footing, comparison.scheme)
+        and item.score != comparison.score
     ]
     if not chosen:
         return None
@@ -144,7 +167,7 @@ def score_table(comparison: Comparison, pooled: Sequence[PooledScore], key: str)
         f"{units}.",
         "RMSE pools over folds as the root of the mean square over dyads, others as a mean over dyads.",
     )
-    caption = f"Other scores on {held_out_phrase(comparison.scheme)}: {footing_title(comparison.footing)}"
+    caption = f"Other scores on {held_out_phrase(comparison.scheme)}: {comparison.sheet.title}"
     return Table(f"scores-{key}", caption, tuple(columns), tuple(rows), notes)
 
 
@@ -159,9 +182,9 @@ def _sentence_case(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def criteria_table(criteria: Sequence[CriterionRow], footing: str, key: str) -> Table:
+def criteria_table(criteria: Sequence[CriterionRow], sheet: FootingSheet, key: str) -> Table:
     """All information criteria on one footing, value above the best and place of each."""
-    chosen = {(row.candidate, row.criterion): row for row in criteria if row.footing == footing}
+    chosen = {(row.candidate, row.criterion): row for row in criteria if row.footing == sheet.text}
     present = [
         (name, title)
         for name, title in zip(_CRITERIA, _CRITERION_TITLES, strict=True)
@@ -191,7 +214,7 @@ def criteria_table(criteria: Sequence[CriterionRow], footing: str, key: str) -> 
     notes = ("All criteria: smaller is better; only differences on one footing have a meaning.",)
     return Table(
         f"criteria-{key}",
-        f"Information criteria: {footing_title(footing)}",
+        f"Information criteria: {sheet.title}",
         tuple(columns),
         tuple(rows),
         notes,
@@ -206,53 +229,3 @@ def _whole(number: float) -> float | int:
 def _words(name: str) -> str | None:
     """A model's name as words, so that it can wrap."""
     return name.replace("_", " ") or None
-
-
-def warning_table(
-    candidates: Sequence[CandidateRow], outcomes: Sequence[OutcomeRow], pooled: Sequence[PooledScore]
-) -> Table:
-    """Everything that went wrong, was left out, or was held impossible, with counts and reasons."""
-    columns = (
-        _CANDIDATE,
-        Column("what", "What", CellKind.TEXT),
-        Column("where", "Where", CellKind.TEXT),
-        Column("how_many", "How many", CellKind.TEXT),
-        Column("reason", "Reason", CellKind.TEXT),
-    )
-    rows = (*_unconverged(candidates), *_not_scored(outcomes), *_impossible(pooled))
-    return Table("warnings", "What failed, was left out, or was held impossible", columns, rows)
-
-
-def _unconverged(candidates: Sequence[CandidateRow]) -> list[tuple[Cell, ...]]:
-    return [
-        (row.candidate, "fit not certified", "all dyads", "1 fit", row.message or Missing("no message"))
-        for row in candidates
-        if row.converged is False
-    ]
-
-
-def _not_scored(outcomes: Sequence[OutcomeRow]) -> list[tuple[Cell, ...]]:
-    chosen = [row for row in outcomes if row.outcome in _OUTCOMES]
-    groups = Counter((row.candidate, row.outcome, row.scheme, row.reason) for row in chosen)
-    totals = Counter((row.candidate, row.scheme) for row in outcomes)
-    rows: list[tuple[Cell, ...]] = []
-    for (candidate, outcome, scheme, reason), number in groups.items():
-        where = held_out_phrase(scheme) if scheme else "all dyads"
-        total = count(totals[candidate, scheme], "fold" if scheme else "fit")
-        how_many = f"{number:,} of {total}"
-        rows.append((candidate, _OUTCOMES[outcome], where, how_many, reason or Missing("no reason given")))
-    return rows
-
-
-def _impossible(pooled: Sequence[PooledScore]) -> list[tuple[Cell, ...]]:
-    return [
-        (
-            item.candidate,
-            "impossible observations",
-            f"{held_out_phrase(item.scheme)}, {footing_title(item.footing)}",
-            f"{item.n_impossible:,} of {item.n_dyads:,} dyads",
-            f"given no probability, so its {score_title(item.score, unit=False)} is infinite",
-        )
-        for item in pooled
-        if item.score == LOG_SCORE and (item.n_impossible or math.isinf(item.value))
-    ]

@@ -1,17 +1,17 @@
-"""The opening sentences of a report: what was compared, who leads where, what to beware of."""
+"""Sentences on the run as a whole: what was compared, how it ended, what to beware of."""
 
 import math
 from collections import Counter
 from collections.abc import Sequence
 
 from steelyard.reports.cells import CellKind, format_cell
-from steelyard.reports.comparing import Comparison, Swap
-from steelyard.reports.frames import CandidateRow, RunTables
-from steelyard.reports.wording import count, finding, footing_title, held_out_phrase, listing
+from steelyard.reports.comparing import Comparison
+from steelyard.reports.frames import CandidateRow, OutcomeRow, RunTables
+from steelyard.reports.wording import count, label_list, listing
 
-__all__ = ["caution_sentences", "compared_sentences", "verdict_sentences"]
+__all__ = ["caution_sentences", "compared_sentences", "outcome_sentence"]
 
-_SHOWN_SWAPS = 6
+_OUTCOMES = {"failed": "failed", "not_applicable": "not applicable"}
 
 
 def compared_sentences(candidates: Sequence[CandidateRow]) -> tuple[str, ...]:
@@ -42,47 +42,14 @@ def _size(n_nodes: int | None, n_dyads: int | None, n_links: int | None) -> str:
     return listing(parts) or "data of unstated size"
 
 
-def verdict_sentences(comparison: Comparison) -> tuple[str, ...]:
-    """Whether in-sample and out-of-sample rankings of one footing agree, and which pairs swap."""
-    if not comparison.scheme:
-        return ("Nothing was scored out of sample on this footing, so AIC stands unchecked.",)
-    if not any(entry.held_out for entry in comparison.entries):
-        return ("No candidate has a log score here; means are compared by the other scores only.",)
-    if len(comparison.entries) == 1:
-        return ("Only one candidate stands on this footing, so there is nothing to rank.",)
-    sentences = []
-    if comparison.n_pairs:
-        sentences.append(f"{finding(comparison)}.")
-        sentences.append(_leaders(comparison))
-        swaps = comparison.swaps()
-        if swaps:
-            sentences.append(_swap_sentence(swaps, held_out_phrase(comparison.scheme)))
-    else:
-        sentences.append("Fewer than two candidates are ranked both in sample and out of sample.")
-    missing = [f"{entry.candidate} ({reason})" for entry, reason in comparison.unranked()]
-    if missing:
-        sentences.append(f"Not ranked out of sample: {listing(missing, 8)}.")
-    return tuple(sentences)
-
-
-def _leaders(comparison: Comparison) -> str:
-    both = comparison.ranked_twice
-    best_place = min(entry.held_out_rank or math.inf for entry in both)
-    first_in = [entry.candidate for entry in both if entry.aic_rank == both[0].aic_rank]
-    first_out = [entry.candidate for entry in both if entry.held_out_rank == best_place]
-    if first_in == first_out:
-        return f"Both put {listing(first_in)} first."
-    return f"AIC puts {listing(first_in)} first, the log score {listing(first_out, 4)}."
-
-
-def _swap_sentence(swaps: Sequence[Swap], held_out: str) -> str:
-    overtaken: dict[str, list[str]] = {}
-    for swap in swaps:
-        overtaken.setdefault(swap.ahead_in_sample, []).append(swap.ahead_held_out)
-    falls = [f"{name} falls behind {listing(others, 4)}" for name, others in overtaken.items()]
-    more = len(falls) - _SHOWN_SWAPS
-    rest = f"; and {count(more, 'candidate')} behind others" if more > 0 else ""
-    return f"On {held_out}, {'; '.join(falls[:_SHOWN_SWAPS])}{rest}."
+def outcome_sentence(outcomes: Sequence[OutcomeRow]) -> str:
+    """How the fits and folds ended, in numbers: "55 of 55 fits and folds scored."."""
+    if not outcomes:
+        return ""
+    found = Counter(row.outcome for row in outcomes)
+    scored = found.pop("scored", 0)
+    rest = "".join(f"; {number:,} {_OUTCOMES.get(name, name)}" for name, number in found.items())
+    return f"{scored:,} of {len(outcomes):,} fits and folds scored{rest}."
 
 
 def caution_sentences(tables: RunTables, comparisons: Sequence[Comparison]) -> tuple[str, ...]:
@@ -94,16 +61,18 @@ def caution_sentences(tables: RunTables, comparisons: Sequence[Comparison]) -> t
     if tables.criteria:
         cautions.append("AIC and its kin are computed in sample; they are no test of a forecast.")
     if tables.scores:
+        cautions.append("Lowest and highest fold show how folds differ; they are no standard errors.")
         cautions.append(
-            "Lowest and highest fold show how folds differ; they are no standard errors, and a difference "
-            "between two candidates is not shown to exceed chance here."
+            "No difference between two candidates carries a test yet: a lead is what was measured, not "
+            "shown to exceed chance."
         )
-    footings = dict.fromkeys(footing_title(comparison.footing) for comparison in comparisons)
+    footings = dict.fromkeys(comparison.footing for comparison in comparisons)
     if len(footings) > 1:
         cautions.append(
             f"Scores on different footings ({len(footings)} here) differ in unit and are never compared."
         )
-    return (*cautions, *_node_cautions(tables))
+    closing = "The report ranks; which candidate suits a purpose is for the analyst to review and decide."
+    return (*cautions, *_node_cautions(tables), closing)
 
 
 def _node_cautions(tables: RunTables) -> tuple[str, ...]:
@@ -117,5 +86,5 @@ def _node_cautions(tables: RunTables) -> tuple[str, ...]:
         "and no standard error; its dyads are held certain; one surprise there makes the log score infinite."
     )
     if n_boundary:
-        sentence += f" Here: {count(n_boundary, 'node parameter')} of {listing(sorted(boundary), 6)}."
+        sentence += f" Here: {count(n_boundary, 'node parameter')} of {label_list(sorted(boundary), 6)}."
     return (sentence,)

@@ -3,10 +3,10 @@
 from dataclasses import dataclass
 from enum import Enum
 
-from steelyard.reports.cells import Cell, CellKind, Missing, format_cell, is_missing
+from steelyard.reports.cells import Cell, CellKind, Estimate, Missing, format_cell, is_missing
 from steelyard.reports.errors import ReportError
 
-__all__ = ["Alignment", "Cell", "CellKind", "Column", "Grid", "Missing", "Table"]
+__all__ = ["Alignment", "Cell", "CellKind", "Column", "Estimate", "Grid", "Missing", "Table"]
 
 
 class Alignment(Enum):
@@ -39,7 +39,8 @@ class Column:
 class Grid:
     """What a renderer needs: texts, alignments, and the place of every row when sorted by a column.
 
-    `orders[i][j]` is the place of row i by column j, equal values sharing a place, missing values last (-1).
+    A text may hold a line break, which a renderer of single lines writes as a space. `orders[i][j]` is the
+    place of row i by column j, equal values sharing a place, missing values last (-1).
     """
 
     titles: tuple[str, ...]
@@ -104,4 +105,4 @@ def _sort_key(cell: Cell) -> tuple[float, str]:
         return (0.0, cell.casefold())
     if cell is None or isinstance(cell, Missing):
         return (0.0, "")
-    return (float(cell), "")
+    return (cell.value if isinstance(cell, Estimate) else float(cell), "")

@@ -12,7 +12,7 @@ _GAP = "  "
 def render_text(table: Table) -> str:
     """Write a table as aligned plain text: caption, heading, rule, rows, notes; ends with a line end."""
     grid = table.grid()
-    lines = [grid.titles, *grid.texts]
+    lines = [grid.titles, *(tuple(" ".join(text.split()) for text in row) for row in grid.texts)]
     widths = [max(_width(line[index]) for line in lines) for index in range(len(grid.titles))]
     padded = [_GAP.join(map(_pad, line, widths, grid.alignments)).rstrip() for line in lines]
     rule = _GAP.join("-" * width for width in widths)

@@ -3,25 +3,25 @@
 from collections.abc import Mapping, Sequence
 from types import MappingProxyType
 
-from steelyard.reports.comparing import NO_FOOTING, Comparison
+from steelyard.reports.comparing import Comparison
 
 __all__ = [
     "count",
     "finding",
-    "footing_title",
     "held_out_phrase",
+    "label_list",
     "listing",
     "score_title",
+    "score_unit",
     "short_labels",
+    "tie_remark",
 ]
 
 _SCORES: Mapping[str, tuple[str, str]] = MappingProxyType(
     {
         "log_score": ("log score", "nats per dyad"),
-        "log_score_links": ("log score of the link", "nats per dyad"),
-        "log_score_weights": ("log score of the weight", "nats per dyad"),
         "brier": ("Brier score of the link", "squared probability"),
-        "rmse": ("RMSE of the weight", "unit of the flows"),
+        "rmse": ("RMSE", "unit of the flows"),
     }
 )
 _SCHEMES: Mapping[str, str] = MappingProxyType(
@@ -36,15 +36,23 @@ def count(number: int, noun: str, plural: str = "") -> str:
 
 def listing(items: Sequence[str], limit: int = 0) -> str:
     """Join with commas and "and"; with a limit, the rest is counted."""
-    shown = list(items)
-    if limit and len(shown) > limit:
-        shown = [*shown[:limit], f"{len(shown) - limit} more"]
+    shown = _limited(items, limit)
     return shown[0] if len(shown) == 1 else ", ".join(shown[:-1]) + f" and {shown[-1]}" if shown else ""
 
 
-def footing_title(footing: str) -> str:
-    """A footing as a heading; mean-only candidates stand on none."""
-    return footing or NO_FOOTING
+def label_list(labels: Sequence[str], limit: int = 0) -> str:
+    """Join labels so that commas and "and" inside them leave no doubt where one ends."""
+    shown = _limited(labels, limit)
+    if any(" and " in label for label in shown):
+        return "; ".join(shown)
+    if len(shown) > 2 and any("," in label for label in shown):
+        return "; ".join(shown[:-1]) + f"; and {shown[-1]}"
+    return listing(shown)
+
+
+def _limited(items: Sequence[str], limit: int) -> list[str]:
+    shown = list(items)
+    return [*shown[:limit], f"{len(shown) - limit} more"] if limit and len(shown) > limit else shown
 
 
 def held_out_phrase(scheme: str) -> str:
@@ -58,10 +66,20 @@ def score_title(score: str, *, unit: bool = True) -> str:
     return f"{name} ({of})" if unit and of else name
 
 
+def score_unit(score: str) -> str:
+    """The unit of a score, "" where it has none of its own."""
+    return _SCORES[score][1] if score == "log_score" else ""
+
+
+def tie_remark(shared: str) -> str:
+    """Why candidates share a place: "same weights law", or "tie"."""
+    return f"same {shared}" if shared else "tie"
+
+
 def finding(comparison: Comparison) -> str:
     """One sentence, without its stop, on whether the two rankings of a comparison agree."""
     n_swaps, n_pairs = len(comparison.swaps()), comparison.n_pairs
-    held_out = f"the log score on {held_out_phrase(comparison.scheme)}"
+    held_out = f"the {score_title(comparison.score, unit=False)} on {held_out_phrase(comparison.scheme)}"
     if n_swaps:
         return f"AIC and {held_out} order {n_swaps:,} of {count(n_pairs, 'pair')} differently"
     if comparison.n_ties():

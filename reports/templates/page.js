@@ -1,5 +1,5 @@
 "use strict";
-for (const table of document.querySelectorAll("table")) {
+for (const table of document.querySelectorAll(".table table")) {
   const body = table.tBodies[0];
   const original = Array.from(body.rows);
   const heads = Array.from(table.tHead.rows[0].cells);

@@ -7,7 +7,7 @@ from pathlib import Path
 import pandas as pd
 import pytest
 
-from steelyard.reports import MethodSheet, ReportFacts, ReportFormat, write_reports
+from steelyard.reports import FootingSheet, MethodSheet, ReportFacts, ReportFormat, write_reports
 
 Tables = dict[str, pd.DataFrame]
 
@@ -91,6 +91,17 @@ def three_tables() -> Tables:
 
 
 @pytest.fixture(scope="session")
+def base_tables() -> Tables:
+    """The three candidates; read them only."""
+    return make_three_tables()
+
+
+@pytest.fixture(scope="session")
+def base_facts() -> ReportFacts:
+    return make_facts()
+
+
+@pytest.fixture(scope="session")
 def written(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """A folder with every report of the three candidates; read it only."""
     folder = tmp_path_factory.mktemp("written")
@@ -135,6 +146,10 @@ def make_facts() -> ReportFacts:
         ),
         provenance=(("data digest", "5f1c2a90"),),
         notes=("Invented.",),
+        footings=(
+            FootingSheet(COUNTS, "Whole flows (links and weights), as counts", "For whole flows."),
+            FootingSheet(AMOUNTS, "Whole flows (links and weights), as amounts", "For whole flows."),
+        ),
     )
 
 

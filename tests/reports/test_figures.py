@@ -20,11 +20,17 @@ from steelyard.reports.wording import short_labels
 
 def drawings_of(tables, facts):
     return {
-        drawing.name.partition("-counts")[0]: drawing
+        drawing.name.partition("-whole")[0]: drawing
         for section in build_document(tables, facts).sections
         for drawing in section.drawings
         if "-counts" in drawing.name
     }
+
+
+@pytest.fixture(scope="module")
+def drawn(base_tables, base_facts):
+    """The drawings of the three candidates; read them only."""
+    return drawings_of(base_tables, base_facts)
 
 
 def pooled(*values, better="lower"):
@@ -40,17 +46,18 @@ def words(drawing):
     return {"".join(node.itertext()) for node in root.iter("{http://www.w3.org/2000/svg}text")}
 
 
-def test_what_is_drawn(three_tables, facts):
-    drawings = drawings_of(three_tables, facts)
-    assert list(drawings) == ["ranks", "log-score", "brier-rmse"]
+def test_what_is_drawn(drawn):
+    drawings = drawn
+    assert list(drawings) == ["ranks", "scores"]
     assert (
         drawings["ranks"].finding == "AIC and the log score on held-out dyads order 1 of 3 pairs differently"
     )
-    assert drawings["log-score"].finding == (
-        "Birch has the lowest log score on held-out dyads; 1 of 3 met impossible observations"
+    assert drawings["scores"].finding == (
+        "Birch has the lowest log score; Alder, Birch and Cedar have the lowest Brier score of the link and "
+        "RMSE; 1 of 3 met impossible observations"
     )
     assert {"Alder  1", "2  Alder", "1  Birch", "3  Cedar (∞)"} <= words(drawings["ranks"])
-    assert "∞  1 impossible" in words(drawings["log-score"])
+    assert "∞  1 impossible" in words(drawings["scores"])
 
 
 @pytest.mark.parametrize("kind", FigureFormat)
@@ -69,8 +76,8 @@ def test_the_users_style_is_left_alone(three_tables, facts):
     assert dict(matplotlib.rcParams) == before
 
 
-def test_files_carry_no_date_and_no_version(three_tables, facts):
-    drawing = drawings_of(three_tables, facts)["log-score"]
+def test_files_carry_no_date_and_no_version(drawn):
+    drawing = drawn["scores"]
     assert b"date" not in drawing.content(FigureFormat.SVG).lower()
     assert b"CreationDate" not in drawing.content(FigureFormat.PDF)
     assert matplotlib.__version__.encode() not in drawing.content(FigureFormat.SVG)
@@ -80,7 +87,7 @@ def test_labels_are_text_not_markup(three_tables, facts):
     hostile = '<script>$x$&"'
     for frame in three_tables.values():
         frame["candidate"] = frame["candidate"].replace("Alder", hostile)
-    drawing = drawings_of(three_tables, facts)["log-score"]
+    drawing = drawings_of(three_tables, facts)["scores"]
     assert hostile in words(drawing)
     assert "<script" not in inline_svg(drawing)
 
@@ -104,8 +111,8 @@ def test_labels_do_not_overlap_and_stay_on_the_page(many_tables, facts, number):
             assert all(text.get_fontsize() >= 8 for text in labels)
 
 
-def test_black_is_kept_for_the_observed_network(three_tables, facts):
-    for drawing in drawings_of(three_tables, facts).values():
+def test_black_is_kept_for_the_observed_network(drawn):
+    for drawing in drawn.values():
         for use in ("fill", "stroke"):
             assert f"{use}: {OBSERVED}".encode() not in drawing.content(FigureFormat.SVG)
 
@@ -136,17 +143,14 @@ def test_the_worse_side_is_below_where_higher_is_better():
     assert high > 0.9
 
 
-def test_ids_in_the_page_are_the_drawings_own(three_tables, facts):
-    ids = [
-        set(re.findall(r'\bid="([^"]*)"', inline_svg(drawing)))
-        for drawing in drawings_of(three_tables, facts).values()
-    ]
+def test_ids_in_the_page_are_the_drawings_own(drawn):
+    ids = [set(re.findall(r'\bid="([^"]*)"', inline_svg(drawing))) for drawing in drawn.values()]
     assert all(ids)
     assert not ids[0] & ids[1]
 
 
-def test_colours_in_the_page_are_style_variables(three_tables, facts):
-    svg = inline_svg(drawings_of(three_tables, facts)["log-score"])
+def test_colours_in_the_page_are_style_variables(drawn):
+    svg = inline_svg(drawn["scores"])
     assert "var(--econometric, #0072b2)" in svg
     assert "var(--ink, #2a2b2e)" in svg
     styles = re.findall(r'style="([^"]*)"', svg)

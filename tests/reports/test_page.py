@@ -73,13 +73,32 @@ def test_two_runs_are_byte_identical_and_report_what_they_wrote(tmp_path, writte
     first = {p.relative_to(written).as_posix(): p.read_bytes() for p in written.rglob("*") if p.is_file()}
     assert again == first
     assert {"report.html", "report.md", "tables/scores.csv", "tables/outcomes.csv"} <= again.keys()
-    key = "counts-unit-1-dyads-5f1c2a90-dyads"
+    key = "whole-flows-as-counts-dyads"
     assert {f"figures/ranks-{key}.{ending}" for ending in ("svg", "pdf", "png")} <= again.keys()
 
 
 def test_only_what_is_asked_for(tmp_path, three_tables, facts):
     write_reports(tmp_path, three_tables, facts, frozenset({ReportFormat.CSV}))
     assert [path.name for path in tmp_path.iterdir()] == ["tables"]
+
+
+def test_what_an_earlier_run_left_is_removed_and_nothing_else(tmp_path, three_tables, facts):
+    write_reports(tmp_path, three_tables, facts, ALL)
+    own = [tmp_path / "figures" / "scores-mine.txt", tmp_path / "figures" / "sketch.svg"]
+    own += [tmp_path / "tables" / "mine.csv", tmp_path / "tables" / "scores.tex", tmp_path / "ranks-a.svg"]
+    for path in own:
+        path.write_text("mine", encoding="utf-8")
+    assert list((tmp_path / "figures").glob("scores-*.pdf"))
+    fewer = {name: frame for name, frame in three_tables.items() if name not in ("scores", "outcomes")}
+    paths = write_reports(tmp_path, fewer, facts, ALL)
+    left = {path for path in tmp_path.rglob("*") if path.is_file()}
+    assert left == {*paths, *own}
+
+
+def test_csv_alone_leaves_figures_that_a_page_shows(tmp_path, written, three_tables, facts):
+    shutil.copytree(written, tmp_path / "run")
+    write_reports(tmp_path / "run", three_tables, facts, frozenset({ReportFormat.CSV}))
+    assert len(list((tmp_path / "run" / "figures").iterdir())) == 6
 
 
 def test_tables_it_does_not_know_become_csv(tmp_path, empty_tables, facts):
@@ -94,7 +113,7 @@ def test_a_table_name_cannot_leave_the_folder(tmp_path, empty_tables, facts):
     assert list(tmp_path.iterdir()) == []
 
 
-@pytest.mark.parametrize("number", [0, 1, 2, 40])
+@pytest.mark.parametrize("number", [0, 1, 2, 12])
 def test_page_is_well_formed_for_any_number_of_candidates(many_tables, facts, number):
     outline = outline_of(page_of(many_tables(number), facts))
     assert outline.headings[0] == 1
@@ -127,15 +146,15 @@ def test_every_scheme_has_its_own_section(three_tables, facts):
     assert len(set(outline.ids)) == len(outline.ids)
 
 
-def test_page_asks_for_nothing(three_tables, facts):
-    page = page_of(three_tables, facts)
+def test_page_asks_for_nothing(written):
+    page = (written / "report.html").read_text(encoding="utf-8")
     assert set(outline_of(page).requests) == {"data:,"}
     assert not re.search(r"@import|url\(\s*['\"]?(?!#)", page)
     assert "https://doi.org/10.1/x" in page
 
 
-def test_policy_admits_the_pages_own_script_only(three_tables, facts):
-    page = page_of(three_tables, facts)
+def test_policy_admits_the_pages_own_script_only(written):
+    page = (written / "report.html").read_text(encoding="utf-8")
     (script,) = re.findall(r"<script>(.*?)</script>", page, flags=re.DOTALL)
     digest = base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()
     assert f"default-src 'none'; style-src 'unsafe-inline'; script-src 'sha256-{digest}'" in page
@@ -185,13 +204,16 @@ def test_formats_show_the_same_numbers(written):
 
 def test_markdown_links_figures_that_exist(written):
     linked = re.findall(r"\]\((figures/[^)]*)\)", (written / "report.md").read_text(encoding="utf-8"))
-    assert len(linked) == 4
+    assert len(linked) == 2
     assert all((written / name).exists() for name in linked)
 
 
 def test_each_footing_has_its_own_section_and_no_table_mixes_them(three_tables, facts):
     document = build_document(three_tables, facts)
-    assert [section.key.partition("-")[0] for section in document.sections] == ["counts", "amounts"]
+    assert [section.key for section in document.sections] == [
+        "whole-flows-as-counts-dyads",
+        "whole-flows-as-amounts-dyads",
+    ]
     assert [[row[0] for row in section.ranking.rows] for section in document.sections] == [
         ["Alder", "Birch", "Cedar"],
         ["Cedar"],
@@ -204,22 +226,15 @@ def test_footings_that_a_file_name_cannot_tell_apart_keep_their_figures(three_ta
     for frame in three_tables.values():
         if "footing" in frame:
             frame["footing"] = frame["footing"].replace(
-                {"amounts · unit 1 · dyads 5f1c2a90": "counts, unit 1, dyads 5f1c2a90"}
+                {"amounts · unit 1 · dyads 5f1c2a90": "whole flows, as counts"}
             )
     keys = [section.key for section in build_document(three_tables, facts).sections]
-    assert keys == ["counts-unit-1-dyads-5f1c2a90-dyads", "counts-unit-1-dyads-5f1c2a90-dyads-2"]
+    assert keys == ["whole-flows-as-counts-dyads", "whole-flows-as-counts-dyads-2"]
 
 
-def test_node_parameters_are_counted_and_folded_away(three_tables, facts):
-    page = page_of(three_tables, facts)
+def test_node_parameters_are_counted_and_folded_away(written):
+    page = (written / "report.html").read_text(encoding="utf-8")
     assert '<details class="nodes">\n<summary>2 node parameters, 1 of them at the boundary</summary>' in page
-
-
-def test_standard_errors_stand_side_by_side(three_tables, facts):
-    (alder, _birch) = build_document(three_tables, facts).estimates
-    assert alder.coefficients.grid().texts == (
-        ("distance", "joint", "\N{MINUS SIGN}1.250", "0.250", "<0.001", "0.500", "0.012"),
-    )
 
 
 def test_public_names_are_sorted_and_there():
