@@ -92,7 +92,9 @@ def execute(task: Task, dyads: Dyads) -> TaskResult:
 def _not_applicable(task: Task, dyads: Dyads) -> str:
     model = task.candidate.model
     if dyads.directed not in model.directed:
-        return f"{model.name} is not defined for {'directed' if dyads.directed else 'undirected'} networks"
+        otherwise = f" with these options; {model.requires.otherwise}" if model.requires.otherwise else ""
+        kind = "directed" if dyads.directed else "undirected"
+        return f"{model.name} is not defined for {kind} networks{otherwise}"
     if task.fold is not None and task.fold.holdout not in model.holdouts:
         return f"{model.name} cannot be scored on {task.fold.holdout.value}"
     return ""
@@ -105,6 +107,8 @@ def _full(task: Task, dyads: Dyads) -> tuple[dict[str, Any], Outcome]:
     convergence = fitted.convergence
     messages = [convergence.message] if convergence.message else []
     evidence = list(_evidence(model, fitted, dyads)) if model.measure is not None else []
+    if model.measure is None:
+        messages.append("states a mean only, so it has no log-likelihood, no criteria and no log score")
     impossible = next((e["n_impossible"] for e in evidence if e["native"]), 0)
     if impossible:
         messages.append(f"{impossible} observed dyads are impossible under the fit")

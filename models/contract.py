@@ -84,10 +84,18 @@ class Need(Enum):
 
 @dataclass(frozen=True)
 class Requirements:
-    """What a model asks of a study: covariates, and node columns of the data by name."""
+    """What a model asks of a study.
+
+    Attributes
+    ----------
+    covariates : whether it takes any
+    node_columns : columns of the data by name
+    otherwise : what to use instead on the kind of network that its `directed` leaves out
+    """
 
     covariates: Need = Need.NONE
     node_columns: tuple[str, ...] = ()
+    otherwise: str = ""
 
 
 @dataclass(frozen=True)

@@ -35,7 +35,9 @@ class Covariances:
         return np.asarray(np.sqrt(np.maximum(np.diag(self.by_kind[kind]), 0.0)))
 
 
-def covariances(information: Floats, scores: Floats, pairs: NodePairs | None) -> Covariances:
+def covariances(
+    information: Floats, scores: Floats, pairs: NodePairs | None, n_parameters: int | None = None
+) -> Covariances:
     """All kinds that the observations allow.
 
     Parameters
@@ -43,13 +45,15 @@ def covariances(information: Floats, scores: Floats, pairs: NodePairs | None) ->
     information : (k, k) observed information, positive definite
     scores : (n, k) gradient of each observation's log-likelihood
     pairs : the nodes of each observation; None leaves out the node-clustered kind
+    n_parameters : what the factor of the robust kind counts, where parameters besides these k were estimated
 
     References
     ----------
     .. [1] MacKinnon & White (1985): HC1, the sandwich times n / (n - k).
     .. [2] Fafchamps & Gubert (2007); Aronow, Samii & Assenova (2015): dyads that share a node.
     """
-    n, k = scores.shape
+    n = len(scores)
+    k = scores.shape[1] if n_parameters is None else n_parameters
     bread = np.linalg.inv(information)
     bread = (bread + bread.T) / 2
     factor = n / (n - k) if n > k else np.nan

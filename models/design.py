@@ -8,7 +8,7 @@ import numpy as np
 
 from steelyard.datasets.arrays import Floats, Integers
 
-__all__ = ["ScaledDesign", "scaled_design"]
+__all__ = ["ALIAS_LIMIT", "ScaledDesign", "scaled_design"]
 
 ALIAS_LIMIT = 1e-9
 

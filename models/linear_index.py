@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
-from math import exp, inf
+from dataclasses import dataclass, replace
+from math import exp, inf, log
 
 import numpy as np
 
@@ -14,9 +14,10 @@ from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estima
 from steelyard.models.index_likelihood import IndexFit
 from steelyard.models.separation import MOVES
 
-__all__ = ["LinearIndex", "index_estimates", "node_pairs", "scale_estimate"]
+__all__ = ["REPAIRED", "LinearIndex", "index_estimates", "node_pairs", "per_unit", "scale_estimate"]
 
 CONSTANT = "constant"
+REPAIRED = "node-clustered variance repaired: negative eigenvalues clipped to zero"
 
 
 def node_pairs(dyads: Dyads) -> NodePairs:
@@ -61,6 +62,17 @@ class LinearIndex:
         return index
 
 
+def per_unit(fit: IndexFit, unit: float) -> IndexFit:
+    """The fit of a one-index log-linear mean to flows, from that of flows / unit.
+
+    The constant gains log(unit), and the model covariance, whose variance is the mean, shrinks by the unit.
+    """
+    coefficients = fit.coefficients[0].copy()
+    coefficients[0] += log(unit)
+    kinds = {k: m / unit if k is ErrorKind.MODEL else m for k, m in fit.covariances.items()}
+    return replace(fit, coefficients=(coefficients,), covariances=kinds)
+
+
 def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart) -> Estimates:
     """Rows for the constant and slopes of the first index."""
     names = (CONSTANT, *covariates)
@@ -96,6 +108,4 @@ def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, f
 
 
 def _repair_note(fit: IndexFit) -> str:
-    return (
-        "" if not fit.repaired else "node-clustered variance repaired: negative eigenvalues clipped to zero"
-    )
+    return REPAIRED if fit.repaired else ""

@@ -1,36 +1,57 @@
-"""Poisson regression of counts on all dyads."""
+"""Poisson regression of counts (or, as a pseudo-likelihood, of amounts) on all dyads, with or without node effects."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import ClassVar
+from typing import ClassVar, Protocol
 
 import numpy as np
 
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
+from steelyard.models.declared import Declared
 from steelyard.models.distributions import PoissonLaw
+from steelyard.models.effect_fit import fit_effects
+from steelyard.models.effect_index import EffectIndex, effect_convergence, effect_estimates
+from steelyard.models.errors import ModelError
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.likelihoods import Poisson
-from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs
+from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, per_unit
 from steelyard.models.measure import Measure
+from steelyard.models.node_effects import NodeEffects
 
-__all__ = ["FittedPoisson", "PoissonModel"]
+__all__ = ["FittedPoisson", "FittedPoissonMean", "PoissonModel"]
+
+USE_NODE_EFFECTS = (
+    "use node_effects = true there, since the two ends of an undirected dyad are not told apart"
+)
+
+
+class _Index(Protocol):
+    """The log of the mean on any dyads."""
+
+    def on(self, dyads: Dyads, /) -> Floats: ...
 
 
 @dataclass(frozen=True)
-class FittedPoisson:
-    """Mean exp(index) on every dyad."""
+class FittedPoissonMean:
+    """Mean exp(index) on every dyad, and no more than that."""
 
-    index: LinearIndex
+    index: _Index
     estimates: Estimates
     n_parameters: int
     convergence: Convergence
-    measure: ClassVar[Measure] = Measure.COUNTS
 
     def expected_weight(self, dyads: Dyads, /) -> Floats:
         return np.exp(self.index.on(dyads))
+
+
+@dataclass(frozen=True)
+class FittedPoisson(FittedPoissonMean):
+    """Poisson counts with mean exp(index) on every dyad."""
+
+    measure: ClassVar[Measure] = Measure.COUNTS
 
     def distribution(self, dyads: Dyads, /) -> PoissonLaw:
         return PoissonLaw(self.expected_weight(dyads))
@@ -38,41 +59,119 @@ class FittedPoisson:
 
 @dataclass(frozen=True)
 class PoissonModel:
-    """Counts with log-linear mean, zeros included.
+    """Flows with log-linear mean, zeros included.
 
     Parameters
     ----------
-    covariates : names of the covariates that enter the log of the mean beside a constant
+    covariates : names of the covariates that enter the log of the mean beside a constant or effects
+    origin_effects, destination_effects : an effect for each node as origin, as destination (directed networks)
+    node_effects : one effect for each node, entering at both ends, in place of those
+    amounts : fit the amounts in place of the counts; what is fitted is then a mean only
+
+    Raises
+    ------
+    ModelError : node_effects together with the other effects
     """
 
     covariates: tuple[str, ...]
+    origin_effects: bool = False
+    destination_effects: bool = False
+    node_effects: bool = False
+    amounts: bool = False
 
     name: ClassVar[str] = "poisson"
     family: ClassVar[Family] = Family.ECONOMETRIC
     part: ClassVar[Part] = Part.JOINT
-    measure: ClassVar[Measure] = Measure.COUNTS
-    holdouts: ClassVar[frozenset[Holdout]] = frozenset(Holdout)
-    directed: ClassVar[frozenset[bool]] = frozenset({True, False})
-    information: ClassVar[Information] = Information.COVARIATES
-    requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
+    measure = Declared[Measure | None](Measure.COUNTS, lambda m: None if m.amounts else Measure.COUNTS)
+    holdouts = Declared[frozenset[Holdout]](
+        frozenset(Holdout),
+        lambda m: frozenset(Holdout) - ({Holdout.NODES} if m.effects else set()),
+    )
+    directed = Declared[frozenset[bool]](
+        frozenset({True, False}),
+        lambda m: frozenset({True} if m.origin_effects or m.destination_effects else {True, False}),
+    )
+    information = Declared[Information](
+        Information.COVARIATES,
+        lambda m: Information.STRENGTHS if m.effects else Information.COVARIATES,
+    )
+    requires: ClassVar[Requirements] = Requirements(Need.REQUIRED, otherwise=USE_NODE_EFFECTS)
     summary: ClassVar[str] = (
         "Counts on every dyad, zeros included, are Poisson with a log-linear mean. The slopes are consistent "
-        "whenever that mean is right, whatever the variance; the probabilities are not."
+        "whenever that mean is right, whatever the variance; the probabilities are not. With effects of origins "
+        "and destinations the fitted out- and in-flows of every node are the observed ones. On amounts it is a "
+        "pseudo-likelihood, which states a mean and no distribution."
     )
-    formula: ClassVar[str] = "P(w) = exp(-m) m^w / w!,  log m = constant + sum of slope x covariate"
-    parameters: ClassVar[str] = "maximum likelihood; covariates + 1"
+    formula: ClassVar[str] = (
+        "P(w) = exp(-m) m^w / w!,  log m = constant + sum of slope x covariate;  with effects "
+        "log m_ij = a_i + b_j + sum of slope x covariate (node_effects: a_i + a_j), no constant"
+    )
+    parameters: ClassVar[str] = (
+        "maximum likelihood; covariates + 1. With effects their rank instead of 1: origins + destinations less "
+        "one for each connected part, or the nodes, fewer at the boundary; a and b are given equal sums. "
+        "Covariates that the effects contain are set aside. Effects have no node-clustered errors"
+    )
     caution: ClassVar[str] = (
         "Flows vary far more than Poisson counts: read robust or node-clustered errors, and do not trust its "
-        "probability of a zero. Its log-likelihood on other units is another number."
+        "probability of a zero. Its log-likelihood on other units is another number. On amounts the model errors "
+        "depend on the unit and mean nothing. With effects it is told every strength: compare it within its "
+        "information tier. A node without flow on its training dyads has mean 0 on its other dyads too, so a "
+        "held-out flow there is an impossible observation; a dyad that the training dyads say nothing about "
+        "is given their average flow."
     )
-    sources: ClassVar[str] = "Gourieroux, Monfort & Trognon (1984); Santos Silva & Tenreyro (2006)"
+    sources: ClassVar[str] = (
+        "Gourieroux, Monfort & Trognon (1984); Santos Silva & Tenreyro (2006); Correia, Guimaraes & Zylkin (2019) "
+        "on separation with effects"
+    )
 
-    def fit(self, dyads: Dyads, /) -> FittedPoisson:
-        """Maximum likelihood on all of these dyads, zeros included."""
-        found = fit_indices(Poisson(dyads.counts), [dyads.design(self.covariates)], node_pairs(dyads))
-        return FittedPoisson(
-            index=LinearIndex.of(found, self.covariates),
-            estimates=index_estimates(found, self.covariates, EstimatePart.JOINT),
-            n_parameters=found.rank,
-            convergence=found.convergence,
+    def __post_init__(self) -> None:
+        if self.node_effects and (self.origin_effects or self.destination_effects):
+            raise ModelError(
+                "node_effects gives each node one effect at both ends; give either node_effects or "
+                "origin_effects and destination_effects, not both"
+            )
+
+    @property
+    def effects(self) -> NodeEffects | None:
+        """Which effects the options ask for."""
+        return NodeEffects.chosen(
+            origin=self.origin_effects, destination=self.destination_effects, node=self.node_effects
         )
+
+    def fit(self, dyads: Dyads, /) -> FittedPoissonMean:
+        """Maximum likelihood on all of these dyads, zeros included.
+
+        Raises
+        ------
+        ModelError : origin or destination effects on an undirected network, or too few dyads
+        """
+        if dyads.directed not in self.directed:
+            raise ModelError(
+                f"origin_effects and destination_effects need a directed network; {USE_NODE_EFFECTS}"
+            )
+        response = dyads.weights if self.amounts else dyads.counts
+        # A pseudo-likelihood may meet any unit: flows near 1 keep the stopping rule the same in all of them.
+        unit = float(response.mean()) if self.amounts and response.any() else 1.0
+        found = (
+            self._with_effects(response, dyads, unit) if self.effects else self._plain(response, dyads, unit)
+        )
+        return FittedPoissonMean(*found) if self.amounts else FittedPoisson(*found)
+
+    def _plain(
+        self, response: Floats, dyads: Dyads, unit: float
+    ) -> tuple[LinearIndex, Estimates, int, Convergence]:
+        fit = fit_indices(Poisson(response / unit), [dyads.design(self.covariates)], node_pairs(dyads))
+        fit = fit if unit == 1.0 else per_unit(fit, unit)
+        rows = index_estimates(fit, self.covariates, EstimatePart.JOINT)
+        return LinearIndex.of(fit, self.covariates), rows, fit.rank, fit.convergence
+
+    def _with_effects(
+        self, response: Floats, dyads: Dyads, unit: float
+    ) -> tuple[EffectIndex, Estimates, int, Convergence]:
+        assert self.effects is not None  # the caller's branch
+        ends = self.effects.ends(dyads.origin, dyads.destination, dyads.n_nodes)
+        columns = dyads.design(self.covariates)[:, 1:]
+        fit = fit_effects(response, columns, ends, node_pairs(dyads), unit)
+        rows = effect_estimates(fit, self.covariates, dyads.labels, EstimatePart.JOINT)
+        convergence = effect_convergence(fit, self.covariates, dyads.labels)
+        return EffectIndex.of(fit, self.covariates), rows, fit.rank, convergence

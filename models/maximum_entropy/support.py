@@ -25,7 +25,7 @@ from scipy.sparse.csgraph import connected_components
 
 from steelyard.datasets import Bools, Integers
 
-__all__ = ["Support", "degree_support"]
+__all__ = ["Support", "degree_support", "strength_support"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,10 +67,27 @@ def degree_support(links: Bools, known: Bools, *, directed: bool) -> Support:
     known : (N, N) which dyads are in the set; likewise
     directed : whether a node's degree as origin and as destination are two constraints or one
     """
-    n = len(links)
     if not directed:
         links, known = links | links.T, known | known.T
-    add, remove = known & ~links, known & links
+    return _support(known & ~links, known & links)
+
+
+def strength_support(links: Bools, known: Bools, *, directed: bool) -> Support:
+    """Components where strengths are matched, not degrees: a link can then also grow, without bound.
+
+    Parameters
+    ----------
+    links, known, directed : as for `degree_support`; a dyad that is not free has the expected flow 0, and one
+        that no observation holds back may be sent to infinity (`surely_linked`)
+    """
+    if not directed:
+        links, known = links | links.T, known | known.T
+    return _support(known, known & links)
+
+
+def _support(add: Bools, remove: Bools) -> Support:
+    """Components of the graph in which flow can be added on some dyads and taken away on others."""
+    n = len(add)
     rows, columns = np.nonzero(add)
     back_rows, back_columns = np.nonzero(remove)
     start = np.concatenate([rows, back_columns + n])
