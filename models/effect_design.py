@@ -24,6 +24,7 @@ class EffectDesign:
     back : (k, r) so that slopes of the original columns = back @ slopes of `matrix`, 0 for columns set aside
     taken : (P, k) effects C with original columns - E C = what is left of them
     contained : positions of columns that the effects contain; further columns may be aliased with each other
+    rounding : largest rounding of an entry of `matrix`, from columns that lie far from zero
     """
 
     incidence: Incidence
@@ -31,6 +32,7 @@ class EffectDesign:
     back: Floats
     taken: Floats
     contained: tuple[int, ...]
+    rounding: float
 
     @property
     def rank(self) -> int:
@@ -58,5 +60,10 @@ def effect_design(columns: Floats, incidence: Incidence) -> EffectDesign:
     left[:, contained] = 0.0
     scaled = scaled_design(left)
     return EffectDesign(
-        incidence, scaled.matrix, scaled.back, taken, tuple(np.flatnonzero(contained).tolist())
+        incidence=incidence,
+        matrix=scaled.matrix,
+        back=scaled.back,
+        taken=taken,
+        contained=tuple(np.flatnonzero(contained).tolist()),
+        rounding=float((rounding @ np.abs(scaled.back)).max(initial=0.0)),
     )

@@ -94,7 +94,8 @@ def effect_separation(links: Bools, columns: Floats, ends: EffectEnds) -> Effect
         if direction is None:
             return EffectSeparation(tuple(stages), keep, design)
         moved = direction.moves(columns[keep], kept) != 0.0
-        if not moved.any():
+        if not moved.any() or moved[links[keep]].any():
+            # Rounding was taken for a direction: whether the fit is one, its certificate will say.
             return EffectSeparation(tuple(stages), keep, design)
         stages.append(direction)
         keep[np.flatnonzero(keep)[moved]] = False
@@ -116,7 +117,7 @@ def _direction(links: Bools, ends: EffectEnds, design: EffectDesign) -> Directio
     # With links for all it knows, the support's parts are the components of the positive flows.
     linked = Incidence.of(linked_ends, _support(np.ones(int(links.sum()), dtype=bool), linked_ends))
     left, taken = linked.without_effects(design.matrix[links])
-    still = _null_space(left)
+    still = _null_space(left, max(SAME, design.rounding))
     if still.shape[1] == 0:
         return None
     offsets = -taken @ still
@@ -135,12 +136,12 @@ def _direction(links: Bools, ends: EffectEnds, design: EffectDesign) -> Directio
     return _on_nodes(design.original_effects(effects, slopes), slopes, design.incidence, ends)
 
 
-def _null_space(left: Floats) -> Floats:
+def _null_space(left: Floats, limit: float) -> Floats:
     """(r, q) slopes that move no positive flow; the columns are of unit scale, so the limit is absolute."""
     triangle = np.linalg.qr(left / np.sqrt(len(left)), mode="r")
     _, sizes, rows = np.linalg.svd(triangle)
     full = np.concatenate([sizes, np.zeros(left.shape[1] - len(sizes))])
-    return np.asarray(rows[full <= SAME].T)
+    return np.asarray(rows[full <= limit].T)
 
 
 def _lowered(rows: csr_array) -> Floats | None:
