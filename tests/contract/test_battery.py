@@ -11,7 +11,6 @@ import pytest
 from steelyard.models import Model, Need, Part, TwoPart, model_registry
 from steelyard.models.checks import EXAMPLE_COVARIATES, Check, ExampleFlows, checks_for
 
-
 # Options under which a model declares or estimates something else than by default.
 VARIANTS: Mapping[str, tuple[Mapping[str, Any], ...]] = {
     "poisson": (
