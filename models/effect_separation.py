@@ -34,6 +34,7 @@ __all__ = ["Direction", "EffectSeparation", "Stage", "effect_separation"]
 MOVES = 1e-6
 ROWS_AT_FIRST = 2_000
 SAME = 1e-9
+DUST = 1e-5
 
 
 @dataclass(frozen=True, eq=False)
@@ -127,9 +128,11 @@ def _direction(links: Bools, ends: EffectEnds, design: EffectDesign) -> Directio
     slopes_part = design.matrix[~links] @ still + zeros.spread(offsets)
     gauge = csr_array(linked.gauge)
     gauge_part = sum((gauge[p] for p in zeros.positions[1:]), start=gauge[zeros.positions[0]])
-    answer = _lowered(csr_array(hstack([csr_array(slopes_part), gauge_part])))
+    rows = csr_array(hstack([csr_array(slopes_part), gauge_part]))
+    answer = _lowered(rows)
     if answer is None:
         return None
+    answer = _cleaned(rows, answer, still)
     reduced = still @ answer[: still.shape[1]]
     effects = offsets @ answer[: still.shape[1]] + linked.gauge @ answer[still.shape[1] :]
     slopes = design.back @ np.where(np.abs(reduced) > SAME, reduced, 0.0)
@@ -164,6 +167,16 @@ def _lowered(rows: csr_array) -> Floats | None:
         if not len(new):
             return np.asarray(answer.x) if (moved < -MOVES).any() else None
         active = np.union1d(active, new)
+
+
+def _cleaned(rows: csr_array, answer: Floats, still: Floats) -> Floats:
+    """The answer without the dust that the programme's tolerance leaves on slopes that need not move."""
+    slopes = still @ answer[: still.shape[1]]
+    clean = np.where(np.abs(slopes) > DUST * np.abs(slopes).max(), slopes, 0.0)
+    inside = still.T @ clean
+    other = np.concatenate([inside, answer[still.shape[1] :]])
+    same = np.abs(still @ inside - clean).max() <= SAME
+    return other if same and np.asarray(rows @ other).max() <= MOVES / 2 else answer
 
 
 def _on_nodes(effects: Floats, slopes: Floats, incidence: Incidence, ends: EffectEnds) -> Direction:

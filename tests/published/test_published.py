@@ -3,7 +3,8 @@
 One TOML file a check in `checks/`: [source], [data], [fit], [expect]; README.md lists them. An expectation has a
 `value`, an absolute tolerance `atol` (a number, or one for each entry), and `why` the tolerance is what it is.
 `without` leaves out one position (the constant is 0), and `differs_at` names positions where the outside number is
-known to differ, which must then do so.
+known to differ, which must then do so. `effects` names two columns whose effects are absorbed; `cluster` names one or
+two columns: observations that share a value of either are dependent.
 """
 
 from __future__ import annotations
@@ -25,6 +26,7 @@ from steelyard.benchmark.footing import Footing, Scope
 from steelyard.benchmark.scores import BRIER, LOG_SCORE
 from steelyard.datasets import Floats
 from steelyard.models import ErrorKind, FlowDistribution, Measure
+from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import (
     DispersionForm,
     LinkLaw,
@@ -33,8 +35,10 @@ from steelyard.models.distributions import (
     PoissonLaw,
 )
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
+from steelyard.models.effect_fit import EffectFit, fit_effects
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import Logit, LogNormal, Poisson
+from steelyard.models.node_effects import EffectEnds, NodeEffects
 
 FOLDER = Path(__file__).parent / "checks"
 NAMES = sorted(path.stem for path in FOLDER.glob("*.toml"))
@@ -52,7 +56,7 @@ def data_frame(package: str, item: str) -> Any:
 
 
 def column(frame: Any, term: str) -> Floats:
-    """`x`, `x squared`, `log x`, `x > 0`, `x = value`, or several of the last joined by ` & `."""
+    """`x`, `x squared`, `log x`, `exp x`, `log x / y`, `x > 0`, `x = value`, or several of the last joined by ` & `."""
     if " & " in term:
         return np.asarray(np.prod([column(frame, part) for part in term.split(" & ")], axis=0))
     if " = " in term:
@@ -64,6 +68,11 @@ def column(frame: Any, term: str) -> Floats:
         return column(frame, term.removesuffix(" squared")) ** 2
     if term.startswith("log "):
         return np.log(column(frame, term.removeprefix("log ")))
+    if term.startswith("exp "):
+        return np.exp(column(frame, term.removeprefix("exp ")))
+    if " / " in term:
+        over, under = term.split(" / ")
+        return column(frame, over) / column(frame, under)
     return frame[term].to_numpy(dtype=np.float64)
 
 
@@ -78,6 +87,7 @@ class Fit:
     response: Floats
     design: Floats
     found: IndexFit
+    clusters: int = 0
 
     @property
     def k(self) -> int:
@@ -157,20 +167,64 @@ class Fit:
         return [i for i in range(self.k) if not any(d[i] for d in self.found.directions)]
 
 
+def levels(frame: Any, name: str) -> Any:
+    """(n,) position of each observation's value among the distinct ones."""
+    return np.unique(frame[name].astype(str), return_inverse=True)[1].astype(np.int64)
+
+
+def shared(frame: Any, cluster: list[str]) -> NodePairs | None:
+    """The clusters as nodes: with one column the second end is the observation itself, shared with none."""
+    if not cluster:
+        return None
+    first = levels(frame, cluster[0])
+    second = levels(frame, cluster[1]) if len(cluster) > 1 else np.arange(len(frame))
+    return NodePairs(first, first.max() + 1 + second, int(first.max() + second.max() + 2))
+
+
+def without_constant(found: EffectFit) -> IndexFit:
+    """A fit with effects in the terms of one without; its coefficients are the slopes alone."""
+    return IndexFit(
+        coefficients=(found.slopes,),
+        covariances=found.covariances,
+        repaired=found.repaired,
+        aliased=(found.aliased,),
+        directions=(),
+        separated=found.separated,
+        rank=found.rank,
+        convergence=found.convergence,
+    )
+
+
+def fit_with_effects(frame: Any, data: Mapping[str, Any], pairs: NodePairs | None) -> Fit:
+    """Poisson with the effects of two columns absorbed."""
+    response = column(frame, data["response"])
+    columns = np.column_stack([column(frame, t) for t in data["terms"]])
+    first, second = (levels(frame, name) for name in data["effects"])
+    ends = EffectEnds(
+        NodeEffects.ORIGIN_AND_DESTINATION, first, second, int(max(first.max(), second.max())) + 1
+    )
+    found = fit_effects(response, columns, ends, pairs)
+    return Fit("poisson", response, columns, without_constant(found), frame[data["cluster"][0]].nunique())
+
+
 @lru_cache(maxsize=4)
 def fit(name: str) -> Fit:
     check = check_file(name)
     frame = data_frame(check["data"]["package"], check["data"]["item"])
+    pairs = shared(frame, check["data"].get("cluster", []))
+    if "effects" in check["data"]:
+        return fit_with_effects(frame, check["data"], pairs)
     response = column(frame, check["data"]["response"])
     design = np.column_stack([np.ones(len(frame)), *(column(frame, t) for t in check["data"]["terms"])])
     law = check["fit"]["law"]
     if law == "negative_binomial":
         found = fit_negative_binomial(response, design)
     elif law == "lognormal":
-        found = fit_indices(LogNormal(response), [design, np.ones((len(response), 1))])
+        found = fit_indices(LogNormal(response), [design, np.ones((len(response), 1))], pairs)
     else:
-        found = fit_indices(Poisson(response) if law == "poisson" else Logit(response), [design])
-    return Fit(law, response, design, found)
+        found = fit_indices(Poisson(response) if law == "poisson" else Logit(response), [design], pairs)
+    clusters = frame[check["data"]["cluster"][0]].nunique() if pairs else 0
+    return Fit(law, response, design, found, clusters)
 
 
 QUANTITIES: Mapping[str, Callable[[Fit], Any]] = {
@@ -181,6 +235,12 @@ QUANTITIES: Mapping[str, Callable[[Fit], Any]] = {
     "brier": lambda f: BRIER.summarise(BRIER.values(f.distribution.link_probability, f.response)),
     "coefficients": lambda f: f.found.coefficients[0],
     "deviance": lambda f: f.deviance,
+    # One-way clusters: programs multiply by G / (G - 1), some also by (n - 1) / (n - k); ours has no factor.
+    "errors_clustered": lambda f: f.errors(ErrorKind.NODE_CLUSTERED, f.clusters / (f.clusters - 1)),
+    "errors_clustered_both": lambda f: f.errors(
+        ErrorKind.NODE_CLUSTERED,
+        f.clusters / (f.clusters - 1) * (len(f.response) - 1) / (len(f.response) - f.k),
+    ),
     "errors_finite": lambda f: f.errors(ErrorKind.MODEL)[f.finite],
     "errors_hc0": lambda f: f.errors(ErrorKind.ROBUST, f.hc0),
     # Slopes alone counted, as programs for least squares do; sigma is one of our parameters.
