@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import ClassVar, Protocol
 
 import numpy as np
@@ -14,7 +14,7 @@ from steelyard.models.distributions import PoissonLaw
 from steelyard.models.effect_fit import fit_effects
 from steelyard.models.effect_index import EffectIndex, effect_convergence, effect_estimates
 from steelyard.models.errors import ModelError
-from steelyard.models.estimates import EstimatePart, Estimates
+from steelyard.models.estimates import EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.likelihoods import Poisson
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, per_unit
@@ -26,6 +26,7 @@ __all__ = ["FittedPoisson", "FittedPoissonMean", "PoissonModel"]
 USE_NODE_EFFECTS = (
     "use node_effects = true there, since the two ends of an undirected dyad are not told apart"
 )
+UNIT_NOTE = "pseudo-likelihood: the model error depends on the unit, the others do not"
 
 
 class _Index(Protocol):
@@ -99,8 +100,9 @@ class PoissonModel:
     summary: ClassVar[str] = (
         "Counts on every dyad, zeros included, are Poisson with a log-linear mean. The slopes are consistent "
         "whenever that mean is right, whatever the variance; the probabilities are not. With effects of origins "
-        "and destinations the fitted out- and in-flows of every node are the observed ones. On amounts it is a "
-        "pseudo-likelihood, which states a mean and no distribution."
+        "and destinations (options origin_effects, destination_effects) the fitted out- and in-flows of every "
+        "node are the observed ones; with one effect a node (node_effects) their sum is. With the option amounts "
+        "it is a pseudo-likelihood of the amounts, which states a mean and no distribution."
     )
     formula: ClassVar[str] = (
         "P(w) = exp(-m) m^w / w!,  log m = constant + sum of slope x covariate;  with effects "
@@ -152,14 +154,15 @@ class PoissonModel:
         response = dyads.weights if self.amounts else dyads.counts
         # A pseudo-likelihood may meet any unit: flows near 1 keep the stopping rule the same in all of them.
         unit = float(response.mean()) if self.amounts and response.any() else 1.0
-        found = (
-            self._with_effects(response, dyads, unit) if self.effects else self._plain(response, dyads, unit)
-        )
-        return FittedPoissonMean(*found) if self.amounts else FittedPoisson(*found)
+        fit = self._with_effects if self.effects else self._plain
+        index, rows, n_parameters, convergence = fit(response, dyads, unit)
+        if self.amounts:
+            return FittedPoissonMean(index, _of_a_pseudo_likelihood(rows), n_parameters, convergence)
+        return FittedPoisson(index, rows, n_parameters, convergence)
 
     def _plain(
         self, response: Floats, dyads: Dyads, unit: float
-    ) -> tuple[LinearIndex, Estimates, int, Convergence]:
+    ) -> tuple[_Index, Estimates, int, Convergence]:
         fit = fit_indices(Poisson(response / unit), [dyads.design(self.covariates)], node_pairs(dyads))
         fit = fit if unit == 1.0 else per_unit(fit, unit)
         rows = index_estimates(fit, self.covariates, EstimatePart.JOINT)
@@ -167,7 +170,7 @@ class PoissonModel:
 
     def _with_effects(
         self, response: Floats, dyads: Dyads, unit: float
-    ) -> tuple[EffectIndex, Estimates, int, Convergence]:
+    ) -> tuple[_Index, Estimates, int, Convergence]:
         assert self.effects is not None  # the caller's branch
         ends = self.effects.ends(dyads.origin, dyads.destination, dyads.n_nodes)
         columns = dyads.design(self.covariates)[:, 1:]
@@ -175,3 +178,15 @@ class PoissonModel:
         rows = effect_estimates(fit, self.covariates, dyads.labels, EstimatePart.JOINT)
         convergence = effect_convergence(fit, self.covariates, dyads.labels)
         return EffectIndex.of(fit, self.covariates), rows, fit.rank, convergence
+
+
+def _of_a_pseudo_likelihood(rows: Estimates) -> Estimates:
+    """The same rows, those with errors saying which of them to read."""
+    return Estimates(
+        tuple(
+            replace(row, note=f"{row.note}; {UNIT_NOTE}" if row.note else UNIT_NOTE)
+            if row.status is Status.FREE
+            else row
+            for row in rows
+        )
+    )

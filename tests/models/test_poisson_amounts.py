@@ -66,6 +66,7 @@ def test_it_states_a_mean_and_no_law() -> None:
     found, _ = fitted(True, {}, 1.0)
     assert not hasattr(found, "distribution")
     assert not hasattr(found, "measure")
+    assert all("model error depends on the unit" in e.note for e in found.estimates)
 
 
 def test_small_amounts_are_not_rounded_to_counts() -> None:
