@@ -72,7 +72,7 @@ def fit_effects(
     ----------
     response : (n,) flows >= 0
     columns : (n, k) covariates; a constant is among the effects
-    ends : whose effects enter each dyad; a pair of ends occurs once
+    ends : whose effects enter each dyad
     pairs : nodes of each dyad, for node-clustered covariance
     unit : flows are divided by it inside, which changes no result but rounding and the stopping rule
 

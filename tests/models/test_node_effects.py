@@ -7,6 +7,7 @@ import sys
 
 import numpy as np
 import pytest
+import statsmodels.api as sm
 from scipy.sparse import csr_array
 
 from steelyard.datasets import (
@@ -16,6 +17,7 @@ from steelyard.datasets import (
     FlowNetwork,
     Provenance,
     Transform,
+    dataset_registry,
 )
 from steelyard.models import ErrorKind, ModelError, Status
 from steelyard.models.checks import EXAMPLE_COVARIATES, ExampleFlows
@@ -179,6 +181,32 @@ def test_strengths_and_log_likelihood(kind: NodeEffects, directed: bool, masked:
     full = np.column_stack([np.ones(len(dyads)), design, columns])
     best = poisson_log_mass(dyads.counts, np.exp(full @ wanted.coefficients[0])).sum()
     assert poisson_log_mass(dyads.counts, mean).sum() == pytest.approx(best, rel=1e-11)
+
+
+@pytest.mark.parametrize("directed", [True, False])
+def test_states_against_statsmodels_with_dummies(directed: bool) -> None:
+    """Flights between states: statsmodels' Poisson GLM with a dummy for each effect, tightened to 1e-14."""
+    network = dataset_registry().get("state-air-2008").load(directed=directed)
+    dyads = Dyads(network, {"distance": DyadCovariate("distance", Transform.LOG)})
+    kind = NodeEffects.ORIGIN_AND_DESTINATION if directed else NodeEffects.NODE
+    fitted = PoissonModel(("distance",), **OPTIONS[kind]).fit(dyads)
+    n = dyads.n_nodes
+    # One destination is left out: 2N - 1 effects.
+    design = np.column_stack([dyads.column("distance"), indicators(kind, dyads)[:, : 2 * n - 1]])
+    with np.errstate(all="ignore"):
+        wanted = sm.GLM(dyads.counts, design, family=sm.families.Poisson()).fit(tol=1e-14, maxiter=200)
+        robust = sm.GLM(dyads.counts, design, family=sm.families.Poisson()).fit(
+            tol=1e-14, maxiter=200, cov_type="HC0"
+        )
+    row = fitted.estimates.row("distance")
+    assert fitted.n_parameters == np.linalg.matrix_rank(design)
+    assert row.value == pytest.approx(wanted.params[0], rel=1e-8)
+    assert row.standard_errors[ErrorKind.MODEL] == pytest.approx(wanted.bse[0], rel=1e-7)
+    factor = np.sqrt(len(dyads) / (len(dyads) - fitted.n_parameters))
+    assert row.standard_errors[ErrorKind.ROBUST] == pytest.approx(factor * robust.bse[0], rel=1e-7)
+    ours = poisson_log_mass(dyads.counts, fitted.expected_weight(dyads)).sum()
+    assert ours >= wanted.llf - 1e-8 * abs(wanted.llf)
+    assert ours == pytest.approx(wanted.llf, rel=1e-8)
 
 
 def test_without_covariates_a_full_bipartite_sample_has_the_closed_form() -> None:
