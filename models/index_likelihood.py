@@ -173,9 +173,9 @@ def _rank(scaled: Sequence[ScaledDesign]) -> int:
 def _refuse_too_few(n: int, scaled: Sequence[ScaledDesign]) -> None:
     rank = _rank(scaled)
     if n <= rank:
-        raise ModelError(
-            f"{n} observations cannot identify {rank} coefficients; use fewer covariates or more dyads"
-        )
+        observations = "1 observation" if n == 1 else f"{n} observations"
+        coefficients = "1 coefficient" if rank == 1 else f"{rank} coefficients"
+        raise ModelError(f"{observations} cannot identify {coefficients}; use fewer covariates or more dyads")
 
 
 def _kept_pairs(pairs: NodePairs, keep: Bools) -> NodePairs:
