@@ -10,7 +10,7 @@ import numpy as np
 from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
-from steelyard.models.index_likelihood import Edges, IndexDerivatives
+from steelyard.models.index_protocol import Edges, IndexDerivatives, Rows
 from steelyard.models.special import deviance_term, negative_binomial_log_mass
 
 __all__ = [
@@ -23,6 +23,7 @@ __all__ = [
 ]
 
 SERIES_FROM = 100.0
+DIRECT_TO = 1000.0
 
 
 def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
@@ -45,7 +46,7 @@ class Poisson:
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> Poisson:
+    def restricted(self, keep: Rows, /) -> Poisson:
         return Poisson(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -72,7 +73,7 @@ class Logit:
     def edges(self) -> Edges:
         return Edges(self.response == 0, self.response == 1)
 
-    def restricted(self, keep: Bools, /) -> Logit:
+    def restricted(self, keep: Rows, /) -> Logit:
         return Logit(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -101,7 +102,7 @@ class GeometricExcess:
     def edges(self) -> Edges:
         return Edges(self.response == 1, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> GeometricExcess:
+    def restricted(self, keep: Rows, /) -> GeometricExcess:
         return GeometricExcess(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -131,6 +132,21 @@ def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
     return first, t**2 / both + tails
 
 
+def _with_mean(w: Floats, index: Floats, mean: Floats, r: float) -> float:
+    """Sum of the parts of the log mass that hold the mean: w log(mean / r) - (w + r) log(1 + mean / r)."""
+    return float(w @ index - np.log(r) * w.sum() - (w + r) @ np.log1p(mean / r))
+
+
+def _beside_mean(values: Floats, r: float) -> Floats:
+    """(v,) the parts of the log mass that do not hold the mean, for distinct responses.
+
+    Read off the exact mass at mean = response, where it has no large terms.
+    """
+    at = np.maximum(values, 1.0)
+    with_mean = values * np.log(at / r) - (values + r) * np.log1p(at / r)
+    return negative_binomial_log_mass(values, at, np.full(len(values), r)) - with_mean
+
+
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
     """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
@@ -141,7 +157,7 @@ class NegativeBinomialQuadratic:
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> NegativeBinomialQuadratic:
+    def restricted(self, keep: Rows, /) -> NegativeBinomialQuadratic:
         return NegativeBinomialQuadratic(self.response[keep])
 
     @cached_property
@@ -161,10 +177,30 @@ class NegativeBinomialQuadratic:
         coefficients = least_squares(designs[0], index)
         return np.append(coefficients, np.log(np.clip(alpha, 0.05, 20.0)))
 
+    @cached_property
+    def _few_and_many(self) -> tuple[Bools, Bools]:
+        return self.response <= DIRECT_TO, self.response > DIRECT_TO
+
     def value(self, indices: Sequence[Floats], /) -> float:
-        # Any shortcut that adds up w log(mean) terms loses, at weights of 1e9, what the line search must see.
-        size = np.exp(-indices[1][0])
-        return float(np.sum(negative_binomial_log_mass(self.response, np.exp(indices[0]), size)))
+        index, size = indices[0], float(np.exp(-indices[1][0]))
+        mean = np.exp(index)
+        if not 1e-8 < size < 1e12:
+            return float(np.sum(negative_binomial_log_mass(self.response, mean, size)))
+        # The sum of w log(mean) terms is quick, and good where w is small; at weights of 1e9 it would lose what
+        # the line search must see.
+        few, many = self._few_and_many
+        values, counts = self._distinct_few
+        total = float(counts @ _beside_mean(values, size))
+        if not many.any():
+            return total + _with_mean(self.response, index, mean, size)
+        total += _with_mean(self.response[few], index[few], mean[few], size)
+        return total + float(np.sum(negative_binomial_log_mass(self.response[many], mean[many], size)))
+
+    @cached_property
+    def _distinct_few(self) -> tuple[Floats, Floats]:
+        """Distinct small responses, and how often each occurs."""
+        values, counts = np.unique(self.response[self._few_and_many[0]], return_counts=True)
+        return values, counts.astype(np.float64)
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         w, mean, r = self.response, np.exp(indices[0]), float(np.exp(-indices[1][0]))
@@ -196,7 +232,7 @@ class LogNormal:
         none = np.zeros(len(self.response), dtype=bool)
         return Edges(none, none)
 
-    def restricted(self, keep: Bools, /) -> LogNormal:
+    def restricted(self, keep: Rows, /) -> LogNormal:
         return LogNormal(self.response[keep])
 
     @cached_property

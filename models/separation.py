@@ -46,6 +46,8 @@ def separating_direction(design: Floats, lower: Bools, upper: Bools) -> Floats |
     inside = ~(lower | upper)
     # Observations inside their range must not move, which leaves the null space of their columns; the
     # triangular factor has the same null space and few rows.
+    if _pinned(design[inside]):
+        return None
     triangle = qr(design[inside], mode="r")[0][: design.shape[1]]
     free = null_space(triangle, rcond=1e-10) if inside.any() else np.eye(design.shape[1])
     if free.shape[1] == 0:
@@ -61,6 +63,14 @@ def separating_direction(design: Floats, lower: Bools, upper: Bools) -> Floats |
         return None
     sparsest = _sparsest(rows, free, float((rows @ farthest).sum()))
     return np.asarray(free @ (sparsest if (rows @ sparsest > MOVES).any() else farthest))
+
+
+def _pinned(inside: Floats) -> bool:
+    """Whether observations that must not move surely leave no direction: their columns are far from dependent."""
+    if len(inside) < inside.shape[1]:
+        return False
+    values = np.linalg.eigvalsh(inside.T @ inside)
+    return bool(values[0] > 1e-6 * values[-1])
 
 
 def _sparsest(rows: Floats, free: Floats, total: float) -> Floats:

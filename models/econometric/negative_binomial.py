@@ -46,22 +46,22 @@ def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | N
     index instead of two. The slope at alpha = 0 alone does not say so: the likelihood may fall there and rise
     again to a higher maximum inside, so in that case both are fitted and compared.
     """
-    poisson = fit_indices(Poisson(response), [design], pairs)
+    poisson = fit_indices(Poisson(response), [design], errors=False)
     mean = _mean(poisson, design)
     # Slope of the log-likelihood in alpha at alpha = 0, times two.
     falls = float(np.sum((response - mean) ** 2 - response)) <= 0.0
     if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
-        return poisson
+        return fit_indices(Poisson(response), [design], pairs)
     inside = fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
     if not falls:
         return inside
     if not inside.convergence.converged:
-        return poisson
+        return fit_indices(Poisson(response), [design], pairs)
     size = np.exp(-inside.coefficients[1][0])
     gain = negative_binomial_log_mass(response, _mean(inside, design), size) - poisson_log_mass(
         response, mean
     )
-    return inside if float(gain.sum()) > 0.0 else poisson
+    return inside if float(gain.sum()) > 0.0 else fit_indices(Poisson(response), [design], pairs)
 
 
 def _mean(found: IndexFit, design: Floats) -> Floats:
