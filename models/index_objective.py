@@ -15,7 +15,7 @@ from steelyard.models.solvers import Slope, newton_maximise
 __all__ = ["IndexObjective", "good_start"]
 
 # A block's arrays stay in the processor's cache, and no array of the size of the data is made on the way.
-ROWS_IN_A_BLOCK = 2**14
+ROWS_IN_A_BLOCK = 2**16
 # From here on a fit to a sample is a cheaper way to the neighbourhood of the maximum than the first steps of a
 # fit to everything.
 SAMPLE_FROM = 60_000
@@ -63,16 +63,12 @@ class IndexObjective:
 
     def slope(self, point: Floats) -> Slope:
         with np.errstate(over="ignore", invalid="ignore"):
-            slopes = (
-                _block_slope(part.derivatives(self._indices(point, m)), m) for part, m in self.blocks
-            )
+            slopes = (_block_slope(part.derivatives(self._indices(point, m)), m) for part, m in self.blocks)
             return reduce(_added, slopes)
 
 
 def _added(one: Slope, other: Slope) -> Slope:
-    return Slope(
-        one.gradient + other.gradient, one.information + other.information, one.scale + other.scale
-    )
+    return Slope(one.gradient + other.gradient, one.information + other.information, one.scale + other.scale)
 
 
 def _block_slope(found: IndexDerivatives, matrices: Sequence[Floats]) -> Slope:

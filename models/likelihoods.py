@@ -54,9 +54,20 @@ class Poisson:
         mean = 0.5 * (self.response + max(float(self.response.mean()), 1e-300))
         return least_squares(designs[0], np.log(mean) + (self.response - mean) / mean, mean)
 
+    @cached_property
+    def _few_and_many(self) -> tuple[Floats, Bools]:
+        """Responses with 0 in place of large ones, and which are large."""
+        many = self.response > DIRECT_TO
+        return np.where(many, 0.0, self.response), many
+
     def value(self, indices: Sequence[Floats], /) -> float:
-        # Half the deviance, which keeps its digits at weights of 1e12.
-        return -float(np.sum(deviance_term(self.response, np.exp(indices[0]))))
+        index = indices[0]
+        mean = np.exp(index)
+        few, many = self._few_and_many
+        # Half the deviance keeps its digits at weights of 1e12; where the weights are small, w index - mean is as
+        # good, and quicker.
+        large = deviance_term(self.response[many], mean[many]) - mean[many]
+        return float(few @ index - mean.sum() - large.sum())
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         mean = np.exp(indices[0])
@@ -185,7 +196,7 @@ class NegativeBinomialQuadratic:
         index, size = indices[0], float(np.exp(-indices[1][0]))
         mean = np.exp(index)
         if not 1e-8 < size < 1e12:
-            return float(np.sum(negative_binomial_log_mass(self.response, mean, size)))
+            return float(np.sum(negative_binomial_log_mass(self.response, mean, np.full_like(mean, size))))
         # The sum of w log(mean) terms is quick, and good where w is small; at weights of 1e9 it would lose what
         # the line search must see.
         few, many = self._few_and_many
@@ -194,7 +205,8 @@ class NegativeBinomialQuadratic:
         if not many.any():
             return total + _with_mean(self.response, index, mean, size)
         total += _with_mean(self.response[few], index[few], mean[few], size)
-        return total + float(np.sum(negative_binomial_log_mass(self.response[many], mean[many], size)))
+        large = negative_binomial_log_mass(self.response[many], mean[many], np.full(int(many.sum()), size))
+        return total + float(large.sum())
 
     @cached_property
     def _distinct_few(self) -> tuple[Floats, Floats]:
@@ -204,21 +216,23 @@ class NegativeBinomialQuadratic:
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         w, mean, r = self.response, np.exp(indices[0]), float(np.exp(-indices[1][0]))
-        values, inverse = self._distinct
         total = r + mean
+        share, rest = mean / total, r / total
+        by_mean = rest * (w - mean)
         if r < SERIES_FROM:
-            psi = (digamma(values + r) - digamma(r))[inverse]
-            psi_1 = (polygamma(1, values + r) - polygamma(1, r))[inverse]
-            by_size = psi - np.log1p(mean / r) + (mean - w) / total
-            by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
+            values, inverse = self._distinct
+            psi = r * (digamma(values + r) - digamma(r))
+            psi_1 = r**2 * (polygamma(1, values + r) - polygamma(1, r))
+            by_size = psi[inverse] - r * np.log1p(mean / r) - by_mean
+            curvature = psi_1[inverse] + r * share + rest * by_mean
         else:
-            by_size, by_size_2 = _nearly_poisson(w, mean, r)
-        first = np.stack([r * (w - mean) / total, -r * by_size])
-        second = np.empty((2, 2, len(w)))
-        second[0, 0] = -mean * r * (r + w) / total**2
-        second[0, 1] = second[1, 0] = -r * mean * (w - mean) / total**2
-        second[1, 1] = r * by_size + r**2 * by_size_2
-        return IndexDerivatives(first, second)
+            first, second = _nearly_poisson(w, mean, r)
+            by_size, curvature = r * first, r**2 * second
+        both = np.empty((2, 2, len(w)))
+        both[0, 0] = -share * rest * (r + w)
+        both[0, 1] = both[1, 0] = -share * by_mean
+        both[1, 1] = by_size + curvature
+        return IndexDerivatives(np.stack([by_mean, -by_size]), both)
 
 
 @dataclass(frozen=True, eq=False)

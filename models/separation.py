@@ -46,7 +46,7 @@ def separating_direction(design: Floats, lower: Bools, upper: Bools) -> Floats |
     inside = ~(lower | upper)
     # Observations inside their range must not move, which leaves the null space of their columns; the
     # triangular factor has the same null space and few rows.
-    if _pinned(design[inside]):
+    if _pinned(design, inside):
         return None
     triangle = qr(design[inside], mode="r")[0][: design.shape[1]]
     free = null_space(triangle, rcond=1e-10) if inside.any() else np.eye(design.shape[1])
@@ -65,11 +65,11 @@ def separating_direction(design: Floats, lower: Bools, upper: Bools) -> Floats |
     return np.asarray(free @ (sparsest if (rows @ sparsest > MOVES).any() else farthest))
 
 
-def _pinned(inside: Floats) -> bool:
+def _pinned(design: Floats, inside: Bools) -> bool:
     """Whether observations that must not move surely leave no direction: their columns are far from dependent."""
-    if len(inside) < inside.shape[1]:
+    if int(inside.sum()) < design.shape[1]:
         return False
-    values = np.linalg.eigvalsh(inside.T @ inside)
+    values = np.linalg.eigvalsh((design.T * inside) @ design)
     return bool(values[0] > 1e-6 * values[-1])
 
 

@@ -106,7 +106,8 @@ def test_check_says_what_a_run_would_do(small_file: Path, capsys) -> None:
     assert "12 fits in all" in said
     assert "3,540 ordered pairs" in said
     lines = [line for line in said.splitlines() if "configuration" in line]
-    assert lines and all("degrees" in line for line in lines)
+    assert lines
+    assert all("degrees" in line for line in lines)
 
 
 @pytest.mark.parametrize("name", ["poisson", "configuration", "lognormal"])
