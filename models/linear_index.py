@@ -70,6 +70,9 @@ def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart
         if along:
             note = "no finite estimate: the data are separated along it"
             rows.append(Estimate(part, name, inf if along > 0 else -inf, {}, Status.BOUNDARY, note=note))
+        elif fit.separated.all():
+            note = "not estimated: every dyad is fixed at its limit, and none is left to say anything of it"
+            rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
         elif position in fit.aliased[0]:
             note = "set aside: the terms before it already contain it"
             rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
