@@ -46,7 +46,7 @@ class IndexObjective:
         return [m @ part for m, part in zip(matrices, np.split(point, ends), strict=True)]
 
     def value(self, point: Floats) -> float:
-        with np.errstate(over="ignore", invalid="ignore"):
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
             return float(np.sum([part.value(self._indices(point, m)) for part, m in self.blocks]))
 
     def movement(self, step: Floats) -> float:
@@ -62,7 +62,7 @@ class IndexObjective:
         return np.vstack(rows)
 
     def slope(self, point: Floats) -> Slope:
-        with np.errstate(over="ignore", invalid="ignore"):
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
             slopes = (_block_slope(part.derivatives(self._indices(point, m)), m) for part, m in self.blocks)
             return reduce(_added, slopes)
 

@@ -3,18 +3,26 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import exp, inf
 
 import numpy as np
 
 from steelyard.datasets import Dyads, Floats
+from steelyard.models.contract import Convergence
 from steelyard.models.covariance import NodePairs
 from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import IndexFit
 from steelyard.models.separation import MOVES
 
-__all__ = ["LinearIndex", "index_estimates", "node_pairs", "scale_estimate"]
+__all__ = [
+    "LinearIndex",
+    "alpha_estimate",
+    "index_estimates",
+    "node_pairs",
+    "scale_estimate",
+    "with_alpha_at_its_edge",
+]
 
 CONSTANT = "constant"
 
@@ -88,6 +96,25 @@ def scale_estimate(fit: IndexFit, index: int, name: str, part: EstimatePart) -> 
     position = sum(len(c) for c in fit.coefficients[:index])
     value = exp(float(fit.coefficients[index][0]))
     return Estimate(part, name, value, _errors(fit, position, value), positive=True, note=_repair_note(fit))
+
+
+def alpha_estimate(fit: IndexFit, limit: str) -> Estimate:
+    """The row of a dispersion that may be at its edge 0, where the fit comes back with one index.
+
+    `limit` says which law is then the maximum.
+    """
+    if len(fit.coefficients) > 1:
+        return scale_estimate(fit, 1, "alpha", EstimatePart.DISPERSION)
+    note = f"no overdispersion: {limit}"
+    return Estimate(EstimatePart.DISPERSION, "alpha", 0.0, {}, Status.BOUNDARY, True, note)
+
+
+def with_alpha_at_its_edge(fit: IndexFit) -> Convergence:
+    """The certificate, which says so where the dispersion is at its edge 0."""
+    if len(fit.coefficients) > 1:
+        return fit.convergence
+    said = "; ".join(m for m in (fit.convergence.message, "alpha at its edge 0") if m)
+    return replace(fit.convergence, message=said)
 
 
 def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, float]:

@@ -129,7 +129,11 @@ def best_found(
     for start in starts:
         with np.errstate(all="ignore"):
             found = optimize.minimize(
-                minus, start, method="L-BFGS-B", bounds=[(-700.0, 700.0)] * len(start), options={"maxiter": steps}
+                minus,
+                start,
+                method="L-BFGS-B",
+                bounds=[(-700.0, 700.0)] * len(start),
+                options={"maxiter": steps},
             )
         best = max(best, -float(found.fun), -minus(start))
     return best

@@ -10,9 +10,8 @@ import argparse
 from collections import Counter
 from collections.abc import Sequence
 
-from joblib import Parallel, delayed
-
 from cases import COLUMNS, N_CASES, Case, cases
+from joblib import Parallel, delayed
 from trial import Ending, Trial, tried
 
 from steelyard.models import Family, Model, Need, model_registry
@@ -43,7 +42,9 @@ def trials(case: Case) -> list[tuple[str, Case, Trial]]:
 
 
 def main() -> int:
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("--cases", type=int, default=N_CASES)
     parser.add_argument("--jobs", type=int, default=2)
     options = parser.parse_args()
@@ -63,7 +64,11 @@ def as_text(found: Sequence[tuple[str, Case, Trial]]) -> str:
         lines += [_line(group, [o[2] for o in found if _group(o, key) == group]) for group in groups]
     lines.append(_line("all", [trial for _, _, trial in found]))
     reasons = Counter(_kind_of(t.reason) for _, _, t in found if t.ending is Ending.REFUSED)
-    lines += ["", "reasons of refusals", *(f"  {count:5d}  {reason}" for reason, count in reasons.most_common())]
+    lines += [
+        "",
+        "reasons of refusals",
+        *(f"  {count:5d}  {reason}" for reason, count in reasons.most_common()),
+    ]
     wrong = [(k, c, t) for k, c, t in found if t.ending is Ending.WRONG]
     lines += ["", f"silently wrong: {len(wrong)}", *(f"  {k} on {c.label}: {t.reason}" for k, c, t in wrong)]
     return "\n".join(lines)

@@ -6,7 +6,6 @@ from dataclasses import dataclass
 from enum import Enum
 
 import numpy as np
-
 from independent import LIKELIHOODS, Likelihood, best_found, own_columns
 
 from steelyard.datasets import Dyads, Floats
@@ -46,7 +45,11 @@ def tried(model: Model, key: str, dyads: Dyads, *, steps: int) -> Trial:
     try:
         fitted = model.fit(dyads)
     except ModelError as error:
-        return Trial(Ending.REFUSED, str(error)) if str(error) else Trial(Ending.WRONG, "refused without a reason")
+        return (
+            Trial(Ending.REFUSED, str(error))
+            if str(error)
+            else Trial(Ending.WRONG, "refused without a reason")
+        )
     convergence = fitted.convergence
     if not convergence.converged:
         named = bool(convergence.message)
