@@ -82,17 +82,25 @@ def _gamma(w: Floats, parts: Parts) -> Floats:
 
 @dataclass(frozen=True)
 class Likelihood:
-    """Log mass or density of each observation, and which parameters it has besides the first index."""
+    """Log mass or density of each observation, and which parameters it has besides the first index.
+
+    Attributes
+    ----------
+    inflation : a second index
+    scale : a last parameter, held as its logarithm
+    amounts : a density, which may exceed 1
+    """
 
     log_density: Callable[[Floats, Parts], Floats]
     inflation: bool = False
     scale: bool = False
+    amounts: bool = False
 
 
 LIKELIHOODS: Mapping[str, Likelihood] = {
-    "gamma": Likelihood(_gamma, scale=True),
+    "gamma": Likelihood(_gamma, scale=True, amounts=True),
     "logit": Likelihood(_logit),
-    "lognormal": Likelihood(_lognormal, scale=True),
+    "lognormal": Likelihood(_lognormal, scale=True, amounts=True),
     "negative_binomial": Likelihood(_quadratic, scale=True),
     "negative_binomial form 1": Likelihood(_linear, scale=True),
     "poisson": Likelihood(_poisson),
@@ -122,7 +130,9 @@ def best_found(
             index = columns @ point[:k]
             inflation = columns @ point[k : 2 * k] if likelihood.inflation else index
             parts = (index, inflation, float(point[-1]) if likelihood.scale else 0.0)
-            value = -float(np.sum(likelihood.log_density(response, parts)))
+            terms = likelihood.log_density(response, parts)
+            # Far from the data scipy's negative binomial can return "probabilities" above 1; such points are void.
+            value = -float(np.sum(terms)) if likelihood.amounts or not (terms > 1e-6).any() else np.inf
         return value if np.isfinite(value) else 1e300
 
     best = -np.inf
