@@ -13,7 +13,8 @@ import numpy as np
 
 from steelyard.benchmark.ledger import Ledger
 from steelyard.benchmark.specification.finding import Finding, not_computed
-from steelyard.benchmark.specification.pairs import Side, mean_findings, pair_findings
+from steelyard.benchmark.specification.pair_means import mean_findings
+from steelyard.benchmark.specification.pairs import Side, pair_findings
 from steelyard.benchmark.tasks import Outcome, Task, TaskResult
 from steelyard.datasets import Dyads
 

@@ -1,23 +1,20 @@
-"""Which tests apply to two fitted candidates: likelihood ratio, Vuong, rival means."""
+"""Which test applies to the likelihoods of two fitted candidates: likelihood ratio or Vuong."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
-import numpy as np
-
 from steelyard.benchmark.specification.finding import Finding, not_computed
 from steelyard.benchmark.specification.likelihoods import likelihood_ratio, vuong
-from steelyard.benchmark.specification.means import rival_means
 from steelyard.datasets import Dyads, Floats
-from steelyard.models import Fitted, Model, Part, TwoPart
+from steelyard.models import Fitted, Model, Part
 from steelyard.models.estimates import Status
 from steelyard.models.linear_index import node_pairs
-from steelyard.models.nesting import Nesting, Reached, covariate_names, nesting
+from steelyard.models.nesting import Nesting, Reached, nesting
 from steelyard.models.observed_links import observed_links
 
-__all__ = ["Evaluated", "Side", "mean_findings", "pair_findings"]
+__all__ = ["Evaluated", "Side", "pair_findings"]
 
 NODE_PREFIX = "node:"
 
@@ -138,68 +135,3 @@ def _ratio(smaller: Evaluated, larger: Evaluated, how: Nesting, footing: str, ag
     # A scale that ended at its edge counts no parameter, but was free to move.
     more = larger.n_parameters + larger.at_edge - smaller.n_parameters - smaller.at_edge
     return likelihood_ratio(totals[0], totals[1], more - int(at_edge), at_edge, against)
-
-
-def mean_findings(
-    candidate: Side, rivals: Mapping[int, Side], dyads: Dyads
-) -> Mapping[int, tuple[Finding, ...]]:
-    """The rival-means test of one candidate's mean against each of several others, by their keys.
-
-    The derivatives of the mean are spanned by m x for a log-linear mean, and by m x, (1 - p) m x and p x
-    otherwise (exact for two-part laws of a logit with a log-linear or a geometric weight), x its covariates.
-    """
-    reason = _no_null(candidate.fit)
-    if not reason:
-        usable = {key: r.fit.mean for key, r in rivals.items() if r.fit.mean is not None and r.fit.certified}
-        gradient = _gradient(candidate, dyads)
-        assert candidate.fit.mean is not None  # _no_null has a reason otherwise
-        found = rival_means(
-            dyads.weights, candidate.fit.mean, gradient, list(usable.values()), node_pairs(dyads)
-        )
-        done = dict(zip(usable, found, strict=True))
-    else:
-        done = {}
-    why = reason or "the fit of the other is not certified"
-    return {
-        key: done.get(key, (not_computed("", why),))
-        for key, rival in rivals.items()
-        if rival.fit.mean is not None and candidate.fit.mean is not None
-    }
-
-
-def _no_null(candidate: Evaluated) -> str:
-    if candidate.mean is None:
-        return "it has no mean of whole flows"
-    if not candidate.certified:
-        return "the fit of the candidate is not certified"
-    if candidate.by_node:
-        return "the candidate's mean has a parameter for each node, and their derivatives are not taken out"
-    return ""
-
-
-def _gradient(candidate: Side, dyads: Dyads) -> Floats:
-    """(n, k) columns that span the derivatives of the mean."""
-    mean, p = candidate.fit.mean, candidate.fit.link_probability
-    assert mean is not None  # asked for candidates with a mean only
-    parts = (
-        (candidate.model.links, candidate.model.weights)
-        if isinstance(candidate.model, TwoPart)
-        else (candidate.model,)
-    )
-    x = dyads.design(tuple(dict.fromkeys(name for part in parts for name in covariate_names(part))))
-    own = mean[:, None] * x
-    if p is None or _log_linear(mean, x):
-        return own
-    return np.hstack([own, (1.0 - p)[:, None] * own, p[:, None] * x])
-
-
-def _log_linear(mean: Floats, x: Floats) -> bool:
-    """Whether the log of the mean is a combination of the covariates."""
-    used = (mean > 0) & np.isfinite(mean)
-    logs = np.log(mean[used])
-    if len(logs) <= x.shape[1]:
-        return False
-    scale = np.abs(x[used]).max(axis=0)
-    columns = x[used] / np.where(scale > 0, scale, 1.0)
-    rest = logs - columns @ np.linalg.lstsq(columns, logs, rcond=None)[0]
-    return float(np.abs(rest).max()) <= 1e-6 * max(1.0, float(np.abs(logs).max()))
