@@ -65,8 +65,9 @@ def _single(names: Sequence[str], rows: Sequence[SpecificationRow]) -> Table | N
         "two-sided against the standard normal, except RESET by F.",
         "An en dash: the test does not concern that candidate, or could not be computed.",
         *_reasons(rows),
-        "A small p-value speaks against one assumption on these dyads; it chooses no model. Where dyads that share a "
-        "node are associated, only the node-clustered rows allow for it.",
+        "A small p-value speaks against one assumption on these dyads; it chooses no model. Where dyads that "
+        "share a node are associated, only node-clustered rows allow for it; with few nodes (30, say) their "
+        "p-values come out small too often.",
     )
     return Table("tests-of-one", "Tests of each candidate's specification", columns, tuple(cells), notes)
 
