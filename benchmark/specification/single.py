@@ -22,6 +22,7 @@ from steelyard.models import (
     Law,
     Measure,
     Model,
+    ModelError,
     Need,
     Part,
     Status,
@@ -63,6 +64,8 @@ def _guarded(
         return
     try:
         found = list(compute())
+    except ModelError as error:
+        found = [not_computed(where.rstrip(": ") or "all hypotheses", str(error))]
     except Exception as error:  # noqa: BLE001 - a refit may run a stranger's plugin, which may raise anything
         found = [not_computed(where.rstrip(": ") or "all hypotheses", f"{type(error).__name__}: {error}")]
     for finding in found:

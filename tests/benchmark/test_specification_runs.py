@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from steelyard.benchmark import Candidate, Study, run
+from steelyard.benchmark import Candidate, Study, run, study_from_text
 from steelyard.benchmark.engine import study_tasks
 from steelyard.benchmark.ledger import Ledger
 from steelyard.benchmark.specification.single import ADDED
@@ -151,3 +151,52 @@ def test_a_column_can_be_added_to_a_view(small_study: Study) -> None:
         more.with_column("rank", values)
     with pytest.raises(CovariateError, match="finite values"):
         dyads.with_column("other", values[1:])
+
+
+DEGENERATE = """
+title = "degenerate"
+seed = 1
+[data]
+flows = "flows.csv"
+nodes = "nodes.csv"
+[covariates]
+size = { node = "size", end = "origin" }
+[[candidates]]
+label = "Poisson"
+model = "poisson"
+covariates = ["size"]
+[[candidates]]
+label = "Negative binomial"
+model = "negative_binomial"
+covariates = ["size"]
+[[candidates]]
+label = "Density, lognormal"
+links = { model = "density" }
+weights = { model = "lognormal", covariates = ["size"] }
+[[candidates]]
+label = "Logit, geometric"
+links = { model = "logit", covariates = ["size"] }
+weights = { model = "geometric", covariates = ["size"] }
+"""
+ALL = [(o, d) for o in "abcde" for d in "abcde" if o != d]
+
+
+@pytest.mark.parametrize(
+    "flows",
+    [
+        [("a", "b", 3)],
+        [(o, d, 2) for o, d in ALL],
+        [(o, d, 10**9 * (1 + n % 3)) for n, (o, d) in enumerate(ALL)],
+    ],
+    ids=["single link", "all equal", "huge"],
+)
+def test_degenerate_flows_leave_reasons(tmp_path: Path, flows: list[tuple[str, str, int]]) -> None:
+    pd.DataFrame(flows, columns=["origin", "destination", "flow"]).to_csv(tmp_path / "flows.csv", index=False)
+    pd.DataFrame({"node": list("abcde"), "size": range(1, 6)}).to_csv(tmp_path / "nodes.csv", index=False)
+    tests = run(study_from_text(DEGENERATE, folder=tmp_path), jobs=1, progress=False).tests
+    assert len(tests) >= 6  # a row at least for each pair of candidates
+    missing = tests["statistic"].isna()
+    assert missing.any()
+    assert tests.loc[missing, "note"].str.startswith("not computed: ").all()
+    assert not tests["note"].str.contains("Error:|Warning:", regex=True).any()
+    assert np.isfinite(tests.loc[~missing, "statistic"]).all()
