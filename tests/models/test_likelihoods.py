@@ -294,4 +294,6 @@ def test_gamma_shape_derivatives_keep_their_digits(shape: float) -> None:
     else:
         u = 1 / shape
         assert found.first[1, 0] == pytest.approx(-(1 / 2 + u / 12 - u**3 / 120 + u**5 / 252), rel=1e-13)
-        assert found.second[1, 1, 0] == pytest.approx(-(u / 12 - u**3 / 40), rel=1e-3 if shape < 1e4 else 1e-9)
+        assert found.second[1, 1, 0] == pytest.approx(
+            -(u / 12 - u**3 / 40), rel=1e-3 if shape < 1e4 else 1e-9
+        )
