@@ -13,6 +13,7 @@ from steelyard.models.gamma_law import GammaLinkLaw
 from steelyard.models.hurdle_law import HurdleLaw
 from steelyard.models.link_law import LinkLaw
 from steelyard.models.truncated_law import ZeroTruncatedLaw
+from steelyard.models.zero_inflated_law import ZeroInflatedLaw
 
 __all__ = [
     "AmountsDistribution",
@@ -26,6 +27,7 @@ __all__ = [
     "LognormalLinkLaw",
     "NegativeBinomialLaw",
     "PoissonLaw",
+    "ZeroInflatedLaw",
     "ZeroTruncatedLaw",
     "as_amounts",
 ]

@@ -12,7 +12,7 @@ from steelyard.datasets.arrays import Floats, Integers
 from steelyard.models.index_protocol import IndexDerivatives, IndexLikelihood
 from steelyard.models.solvers import Slope, newton_maximise
 
-__all__ = ["IndexObjective", "good_start"]
+__all__ = ["IndexObjective", "even_rows", "good_start"]
 
 # A block's arrays stay in the processor's cache, and no array of the size of the data is made on the way.
 ROWS_IN_A_BLOCK = 2**16
@@ -96,7 +96,7 @@ def good_start(likelihood: IndexLikelihood, matrices: Sequence[Floats]) -> Float
     """
     n = len(matrices[0])
     if n >= SAMPLE_FROM:
-        rows = _even_rows(n)
+        rows = even_rows(n, SAMPLE_ROWS)
         some, few = likelihood.restricted(rows), [m[rows] for m in matrices]
         if all(np.linalg.matrix_rank(m) == m.shape[1] for m in few):
             maximum = newton_maximise(IndexObjective.of(some, few), some.start(few))
@@ -105,6 +105,6 @@ def good_start(likelihood: IndexLikelihood, matrices: Sequence[Floats]) -> Float
     return likelihood.start(matrices)
 
 
-def _even_rows(n: int) -> Integers:
+def even_rows(n: int, most: int) -> Integers:
     """Rows spread evenly, in step with no period that the order of the rows may have."""
-    return np.unique((n * np.modf(GOLDEN * np.arange(1, SAMPLE_ROWS + 1))[0]).astype(np.int64))
+    return np.unique((n * np.modf(GOLDEN * np.arange(1, most + 1))[0]).astype(np.int64))

@@ -16,6 +16,7 @@ from steelyard.models.index_likelihood import IndexFit
 from steelyard.models.separation import MOVES
 
 __all__ = [
+    "CONSTANT",
     "LinearIndex",
     "alpha_estimate",
     "index_estimates",
@@ -50,8 +51,15 @@ class LinearIndex:
     @classmethod
     def of(cls, fit: IndexFit, covariates: Sequence[str]) -> LinearIndex:
         """The first index of a fit."""
-        directions = tuple(tuple(d.tolist()) for d in fit.directions)
-        return cls(tuple(covariates), tuple(fit.coefficients[0].tolist()), directions)
+        return cls.from_coefficients(fit.coefficients[0], covariates, fit.directions)
+
+    @classmethod
+    def from_coefficients(
+        cls, coefficients: Floats, covariates: Sequence[str], directions: Sequence[Floats] = ()
+    ) -> LinearIndex:
+        """An index from its (1 + k,) finite coefficients and the directions of its infinite parts."""
+        infinite = tuple(tuple(d.tolist()) for d in directions)
+        return cls(tuple(covariates), tuple(coefficients.tolist()), infinite)
 
     def on(self, dyads: Dyads) -> Floats:
         """(n,) values of the index."""
@@ -69,24 +77,32 @@ class LinearIndex:
         return index
 
 
-def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart) -> Estimates:
-    """Rows for the constant and slopes of the first index."""
+def index_estimates(
+    fit: IndexFit,
+    covariates: Sequence[str],
+    part: EstimatePart,
+    index: int = 0,
+    directions: Sequence[Floats] | None = None,
+) -> Estimates:
+    """Rows for the constant and slopes of an index; `directions` of the first one come with the fit."""
     names = (CONSTANT, *covariates)
+    before = sum(len(c) for c in fit.coefficients[:index])
     rows = []
     for position, name in enumerate(names):
-        along = next((d[position] for d in fit.directions if d[position] != 0.0), 0.0)
+        infinite = fit.directions if directions is None else directions
+        along = next((d[position] for d in infinite if d[position] != 0.0), 0.0)
         if along:
             note = "no finite estimate: the data are separated along it"
             rows.append(Estimate(part, name, inf if along > 0 else -inf, {}, Status.BOUNDARY, note=note))
         elif fit.separated.all():
             note = "not estimated: every dyad is fixed at its limit, and none is left to say anything of it"
             rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
-        elif position in fit.aliased[0]:
+        elif position in fit.aliased[index]:
             note = "set aside: the terms before it already contain it"
             rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
         else:
-            value = float(fit.coefficients[0][position])
-            errors = _errors(fit, position, 1.0)
+            value = float(fit.coefficients[index][position])
+            errors = _errors(fit, before + position, 1.0)
             rows.append(Estimate(part, name, value, errors, note=_repair_note(fit)))
     return Estimates(tuple(rows))
 

@@ -29,6 +29,10 @@ BUILT_IN = MappingProxyType(
             "steelyard.models.econometric.truncated_negative_binomial:TruncatedNegativeBinomialModel"
         ),
         "truncated_poisson": "steelyard.models.econometric.truncated_poisson:TruncatedPoissonModel",
+        "zero_inflated_negative_binomial": (
+            "steelyard.models.econometric.zero_inflated_negative_binomial:ZeroInflatedNegativeBinomialModel"
+        ),
+        "zero_inflated_poisson": "steelyard.models.econometric.zero_inflated_poisson:ZeroInflatedPoissonModel",
     }
 )
 # What a registered class must declare, and of which type.

@@ -56,8 +56,10 @@ def fit_negative_binomial(
     design: Floats,
     pairs: NodePairs | None = None,
     form: DispersionForm = DispersionForm.QUADRATIC,
+    *,
+    errors: bool = True,
 ) -> IndexFit:
-    """Fit plain arrays; the second index is the constant log alpha.
+    """Fit plain arrays; the second index is the constant log alpha. Without `errors`, no covariances.
 
     Where the likelihood is highest at alpha = 0, the Poisson fit is the maximum, and it comes back with one
     index instead of two. The slope at alpha = 0 alone does not say so: the likelihood may fall there and rise
@@ -68,9 +70,9 @@ def fit_negative_binomial(
     mean = _mean(poisson, design)
     falls = _slope_at_zero(response, mean, quadratic=quadratic) <= 0.0
     if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
-        return fit_indices(Poisson(response), [design], pairs)
+        return fit_indices(Poisson(response), [design], pairs, errors=errors)
     likelihood = NegativeBinomialQuadratic(response) if quadratic else NegativeBinomialLinear(response)
-    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs)
+    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs, errors=errors)
     if not falls:
         return inside
     if inside.convergence.converged and inside.rank:
@@ -79,7 +81,7 @@ def fit_negative_binomial(
         gain = negative_binomial_log_mass(response, fitted, size) - poisson_log_mass(response, mean)
         if float(gain.sum()) > 0.0:
             return inside
-    return fit_indices(Poisson(response), [design], pairs)
+    return fit_indices(Poisson(response), [design], pairs, errors=errors)
 
 
 def _slope_at_zero(response: Floats, mean: Floats, *, quadratic: bool) -> float:
