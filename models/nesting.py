@@ -11,7 +11,7 @@ from typing import Any, Protocol, cast, runtime_checkable
 from steelyard.models.compose import TwoPart
 from steelyard.models.contract import Model
 
-__all__ = ["Containing", "Nesting", "Reached", "covariate_names", "nesting"]
+__all__ = ["COVARIATE_FIELDS", "Containing", "Nesting", "Reached", "covariate_names", "nesting"]
 
 
 class Reached(Enum):
