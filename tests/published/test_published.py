@@ -32,10 +32,12 @@ from steelyard.models.distributions import (
     LognormalLinkLaw,
     NegativeBinomialLaw,
     PoissonLaw,
+    ZeroInflatedLaw,
     ZeroTruncatedLaw,
 )
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
 from steelyard.models.econometric.truncated_negative_binomial import fit_truncated_negative_binomial
+from steelyard.models.econometric.zero_inflated_fit import fit_zero_inflated
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import Logit, LogNormal, Poisson
 from steelyard.models.probit_likelihood import Probit
@@ -86,6 +88,7 @@ class Fit:
     response: Floats
     design: Floats
     found: IndexFit
+    inflation: Floats | None = None
 
     @property
     def k(self) -> int:
@@ -101,8 +104,8 @@ class Fit:
 
     @cached_property
     def scale(self) -> float:
-        """alpha or sigma."""
-        return float(np.exp(self.found.coefficients[1][0]))
+        """alpha or sigma, the last index."""
+        return float(np.exp(self.found.coefficients[-1][0]))
 
     @cached_property
     def distribution(self) -> FlowDistribution:
@@ -110,6 +113,12 @@ class Fit:
             return PoissonLaw(np.exp(self.index))
         if self.law in FORMS:
             return NegativeBinomialLaw(np.exp(self.index), self.scale, FORMS[self.law])
+        if self.inflation is not None:
+            mean = np.exp(self.index)
+            dispersed = self.law == "zero_inflated_negative_binomial"
+            quadratic = DispersionForm.QUADRATIC
+            counts = NegativeBinomialLaw(mean, self.scale, quadratic) if dispersed else PoissonLaw(mean)
+            return ZeroInflatedLaw(self.inflation @ self.found.coefficients[1], counts)
         if self.law == "logit":
             return LinkLaw.from_log_odds(self.index)
         if self.law == "probit":
@@ -214,6 +223,10 @@ def fit(name: str) -> Fit | Hurdle:
     response = column(frame, check["data"]["response"])
     design = design_of(frame, check["data"]["terms"])
     law = check["fit"]["law"]
+    if "inflation_terms" in check["data"]:
+        inflation = design_of(frame, check["data"]["inflation_terms"])
+        whole = fit_zero_inflated(response, [design, inflation], dispersed="negative" in law)
+        return Fit(law, response, design, whole.found, inflation)
     if law == "hurdle":
         seen = response > 0
         links = fitted("logit", seen.astype(float), design_of(frame, check["data"]["link_terms"]))
@@ -256,8 +269,10 @@ QUANTITIES: Mapping[str, Callable[[Fit], Any]] = {
     "expected_frequencies": lambda f: [f.frequency(c) for c in range(10)],
     "expected_zeros": lambda f: f.frequency(0),
     "finite_coefficients": lambda f: f.found.coefficients[0][f.finite],
+    "inflation_coefficients": lambda f: f.found.coefficients[1],
     "infinite_terms": lambda f: [i for i in range(f.k) if i not in f.finite],
     "log_likelihood": lambda f: f.log_likelihood,
+    "log_theta": lambda f: -np.log(f.scale),
     "log_score": lambda f: LOG_SCORE.summarise(
         LOG_SCORE.values(f.distribution.log_density(f.response), f.response)
     ),
