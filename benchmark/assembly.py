@@ -60,17 +60,21 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "n_dyads",
         "n_impossible",
     ),
+    "tests": ("candidate", "test", "against", "statistic", "p_value", "note"),
     "outcomes": ("candidate", "scheme", "repeat", "fold", "outcome", "reason"),
 }
 Finished = Sequence[tuple[Task, TaskResult]]
 
 
-def assemble(finished: Finished, footings: Mapping[str, Footing]) -> dict[str, Any]:
+def assemble(
+    finished: Finished, pairs: Mapping[tuple[str, str], TaskResult], footings: Mapping[str, Footing]
+) -> dict[str, Any]:
     """The tidy tables as DataFrames.
 
     Parameters
     ----------
     finished : tasks with their results, in the order of the study
+    pairs : tests of two candidates, by their labels in the order of the study
     footings : text -> footing, for every footing that the evidence names
     """
     rows = {
@@ -78,6 +82,7 @@ def assemble(finished: Finished, footings: Mapping[str, Footing]) -> dict[str, A
         "criteria": list(_criteria(finished, footings)),
         "estimates": list(_estimates(finished)),
         "scores": list(_scores(finished)),
+        "tests": list(_tests(finished, pairs)),
         "outcomes": list(_outcomes(finished)),
     }
     return {name: pd.DataFrame(rows[name], columns=list(columns)) for name, columns in COLUMNS.items()}
@@ -130,6 +135,20 @@ def _scores(finished: Finished) -> Iterator[dict[str, Any]]:
         for row in result.payload.get("scores", []):
             where = {"scheme": task.scheme, "repeat": task.fold.repeat, "fold": task.fold.fold}
             yield {"candidate": task.candidate.label, **where, **row}
+
+
+def _tests(finished: Finished, pairs: Mapping[tuple[str, str], TaskResult]) -> Iterator[dict[str, Any]]:
+    """For each candidate the tests of its own, then those against each other candidate."""
+    fitted = dict(_full(finished))
+    for label in dict.fromkeys(task.candidate.label for task, _ in finished):
+        for row in fitted[label]["tests"] if label in fitted else []:
+            yield {"candidate": label, **row}
+        for labels, result in pairs.items():
+            for row in result.payload["tests"] if label in labels else []:
+                if labels[row["side"]] == label:
+                    other = labels[1 - row["side"]]
+                    against = f"{other}; {row['against']}" if row["against"] else other
+                    yield {"candidate": label, **row, "against": against}
 
 
 def _outcomes(finished: Finished) -> Iterator[dict[str, Any]]:

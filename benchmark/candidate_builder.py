@@ -14,6 +14,7 @@ from steelyard.benchmark.study_file import CandidateTable, StudyTable
 from steelyard.datasets import Covariate, Registry, SteelyardError
 from steelyard.datasets.errors import suggestion
 from steelyard.models import Model, ModelClass, Need, TwoPart, model_registry
+from steelyard.models.nesting import COVARIATE_FIELDS
 
 __all__ = ["build_candidates"]
 
@@ -103,6 +104,9 @@ def _model(keys: Mapping[str, Any], names: _Names) -> Model:
     covariates = _covariate_names(name, chosen.requires.covariates, keys.get("covariates"), names)
     if covariates is not None:
         options["covariates"] = covariates
+    for key in set(COVARIATE_FIELDS) & options.keys() - {"covariates"}:
+        # A second index, such as the inflation of zeros, takes covariates of its own in the same ways.
+        options[key] = _covariate_names(name, Need.OPTIONAL, keys[key], names) or ()
     return chosen(**_checked_options(chosen, options))
 
 

@@ -43,7 +43,8 @@ def run_study(
     place.keep_study(study)
     place.keep_provenance(study, results, started, _now())
     written = results.report(directory)
-    text = results.summary() + "\n\n" + _written(written, directory)
+    unusable = _broken_lines([*model_registry().load_all()[1], *dataset_registry().load_all()[1]])
+    text = "\n".join([results.summary(), "", *unusable, _written(written, directory)])
     return (SOME_FAILED if results.n_failed else DONE), text
 
 
@@ -64,21 +65,27 @@ def check_study(path: Path) -> Answer:
     study = load_study(path)
     lines = [study.title, "", "data"]
     lines += [f"  {label:<22}{value}" for label, value in data_facts(study.network)]
-    lines += ["", f"candidates ({len(study.candidates)})"]
-    lines += [_candidate_line(study, number) for number in range(len(study.candidates))]
-    lines += ["", "work ahead"]
+    lines += ["", render_text(_candidate_table(study)).rstrip(), "", "work ahead"]
     lines += [
         f"  {s.folds} folds x {s.repeats} repeats of {s.name}, both directions of a pair together"
         for s in study.validation
     ] or ['  no cross-validation: add [[validation]] with scheme = "dyads" to compare out of sample']
-    lines += [f"  {len(study_tasks(study))} fits in all"]
+    fits = len(study_tasks(study))
+    lines += [f"  {fits} fit{'s' if fits > 1 else ''} in all"]
     return DONE, "\n".join(lines)
 
 
-def _candidate_line(study: Study, number: int) -> str:
-    candidate = study.candidates[number]
-    model = candidate.model
-    return f"  {candidate.label:<26}{model.name:<30}{model.family.value:<18}told: {model.information.value}"
+def _candidate_table(study: Study) -> Table:
+    columns = (
+        Column("candidate", "candidate", CellKind.TEXT),
+        Column("model", "model", CellKind.TEXT),
+        Column("family", "family", CellKind.TEXT),
+        Column("information", "is told", CellKind.TEXT),
+    )
+    rows = tuple(
+        (c.label, c.model.name, c.model.family.value, c.model.information.value) for c in study.candidates
+    )
+    return Table("candidates", f"candidates ({len(rows)})", columns, rows, ())
 
 
 def list_models() -> Answer:

@@ -90,7 +90,7 @@ class RunDirectory:
             facts, formats = book.about("facts"), book.about("formats")
             if facts is None or formats is None:
                 raise StudyError(f"the run in {self.path} is not finished; finish it with steelyard run")
-            names = ("candidates", "criteria", "estimates", "scores", "outcomes")
+            names = ("candidates", "criteria", "estimates", "scores", "tests", "outcomes")
             tables = {name: book.table(name) for name in names}
         tables["candidates"]["converged"] = tables["candidates"]["converged"].astype(bool)
         return Results(tables, facts_from_json(facts), frozenset(ReportFormat(f) for f in formats.split()))

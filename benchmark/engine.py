@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from contextlib import nullcontext
 from pathlib import Path
+from typing import Any
 
 from joblib import Parallel, cpu_count, delayed, parallel_config
 from tqdm import tqdm
@@ -14,6 +15,7 @@ from steelyard.benchmark.errors import StudyError
 from steelyard.benchmark.facts import report_facts
 from steelyard.benchmark.footing import Footing, Scope
 from steelyard.benchmark.ledger import Ledger
+from steelyard.benchmark.pairing import StudyPairs
 from steelyard.benchmark.results import Results, facts_to_json
 from steelyard.benchmark.study import Study
 from steelyard.benchmark.tasks import Task, TaskResult, execute, task_key
@@ -59,13 +61,23 @@ def run(
     with Ledger(ledger or Path(":memory:")) as book:
         covariates = repr(sorted(study.covariates.items()))
         keys = [task_key(task, study.dyads, covariates) for task in tasks]
+        pairs = StudyPairs.of(tasks, keys, book)
         results = {key: found for key in keys if (found := book.result(key)) is not None}
-        missing = [(key, task) for key, task in zip(keys, tasks, strict=True) if key not in results]
-        for key, result in _done(missing, study.dyads, len(tasks), jobs or cpu_count(), progress):
-            book.keep(key, result)
-            results[key] = result
+        missing = [
+            (key, task)
+            for key, task in zip(keys, tasks, strict=True)
+            if key not in results or (results[key].payload and task.fold is None and key in pairs.needs)
+        ]
+        with _bar(len(tasks) + len(pairs.keys), len(missing) + len(pairs.missing), progress) as bar:
+            for key, result in _done(missing, study.dyads, jobs or cpu_count(), bar):
+                book.keep(key, result)
+                results[key] = result
+            for key, result in pairs.done(results, study.dyads):
+                book.keep(key, result)
+                bar.update()
+                pairs.results[key] = result
         finished = [(task, results[key]) for key, task in zip(keys, tasks, strict=True)]
-        tables = assemble(finished, _footings(study.dyads))
+        tables = assemble(finished, pairs.by_labels(), _footings(study.dyads))
         book.keep_tables(tables)
         book.note("facts", facts_to_json(facts))
         book.note("formats", " ".join(sorted(f.value for f in study.formats)))
@@ -82,21 +94,25 @@ def _footings(dyads: Dyads) -> dict[str, Footing]:
     return {footing.text: footing for footing in found}
 
 
-def _done(
-    missing: Sequence[tuple[str, Task]], dyads: Dyads, total: int, jobs: int, progress: bool | None
-) -> Iterator[tuple[str, TaskResult]]:
-    """Do the missing tasks, yielding each as it is finished."""
-    bar = tqdm(
+def _bar(total: int, left: int, progress: bool | None) -> Any:
+    """A progress bar over fits, folds and pairs of candidates."""
+    return tqdm(
         total=total,
-        initial=total - len(missing),
-        unit="fit",
+        initial=total - left,
+        unit="task",
         desc="fitting",
         disable=None if progress is None else not progress,
     )
+
+
+def _done(
+    missing: Sequence[tuple[str, Task]], dyads: Dyads, jobs: int, bar: Any
+) -> Iterator[tuple[str, TaskResult]]:
+    """Do the missing tasks, yielding each as it is finished."""
     workers = min(jobs, len(missing))
     # One inner thread each: the linear algebra here is small, and more threads than cores only wait.
     setting = parallel_config("loky", inner_max_num_threads=1) if workers > 1 else nullcontext()
-    with bar, setting:
+    with setting:
         pool = Parallel(n_jobs=max(workers, 1), return_as="generator_unordered")
         for key, label, result in pool(delayed(_keyed)(key, task, dyads) for key, task in missing):
             bar.set_postfix_str(label, refresh=False)

@@ -58,6 +58,11 @@ class Results:
         return self.tables["scores"]
 
     @property
+    def tests(self) -> Any:
+        """Tests of specification on the fits to all dyads."""
+        return self.tables["tests"]
+
+    @property
     def outcomes(self) -> Any:
         """How each task ended."""
         return self.tables["outcomes"]

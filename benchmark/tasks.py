@@ -12,7 +12,7 @@ from functools import cache
 from importlib.metadata import version
 from importlib.resources import files
 from pathlib import Path
-from typing import Any
+from typing import Any, cast
 
 import numpy as np
 
@@ -20,8 +20,10 @@ from steelyard.benchmark.candidates import Candidate
 from steelyard.benchmark.evaluation import log_densities, score_rows
 from steelyard.benchmark.footing import Footing, Scope
 from steelyard.benchmark.scores import Score, score_registry
+from steelyard.benchmark.specification.pairs import Evaluated
+from steelyard.benchmark.specification.single import single_findings
 from steelyard.benchmark.splits import Fold
-from steelyard.datasets import Dyads
+from steelyard.datasets import Dyads, Floats
 from steelyard.models import Estimates, Fitted, Law, Measure, Model, ModelError, Part
 
 __all__ = ["Outcome", "Task", "TaskResult", "execute", "task_key"]
@@ -60,12 +62,15 @@ class TaskResult:
     payload : rows for the tables, by table name; empty unless scored
     seconds : how long it took
     lasting : whether a later run may reuse it; an unforeseen exception is tried again
+    evaluated : arrays of a full fit for tests of two candidates; too large for the ledger, so a kept result
+        has none
     """
 
     outcome: Outcome
     payload: Mapping[str, Any]
     seconds: float
     lasting: bool
+    evaluated: Evaluated | None = None
 
 
 def execute(task: Task, dyads: Dyads) -> TaskResult:
@@ -73,6 +78,7 @@ def execute(task: Task, dyads: Dyads) -> TaskResult:
     started = time.perf_counter()
     lasting = True
     payload: dict[str, Any] = {}
+    evaluated = None
     try:
         refusal = _not_applicable(task, dyads)
         if refusal:
@@ -80,13 +86,16 @@ def execute(task: Task, dyads: Dyads) -> TaskResult:
         else:
             # Overflow to infinity is an answer that the scores count and show; it needs no warning besides.
             with np.errstate(over="ignore"):
-                payload, outcome = _full(task, dyads) if task.fold is None else _fold(task, task.fold, dyads)
+                if task.fold is None:
+                    payload, outcome, evaluated = _full(task, dyads)
+                else:
+                    payload, outcome = _fold(task, task.fold, dyads)
     except ModelError as error:
         outcome = Outcome("failed", str(error))
     except Exception as error:  # noqa: BLE001 - a model may be a stranger's plugin, which may raise anything
         lasting = False
         outcome = Outcome("failed", f"{type(error).__name__}: {error}")
-    return TaskResult(outcome, payload, time.perf_counter() - started, lasting)
+    return TaskResult(outcome, payload, time.perf_counter() - started, lasting, evaluated)
 
 
 def _not_applicable(task: Task, dyads: Dyads) -> str:
@@ -100,15 +109,15 @@ def _not_applicable(task: Task, dyads: Dyads) -> str:
     return ""
 
 
-def _full(task: Task, dyads: Dyads) -> tuple[dict[str, Any], Outcome]:
-    """Fit to all dyads: a row of `candidates`, rows of `estimates`, and evidence for criteria."""
+def _full(task: Task, dyads: Dyads) -> tuple[dict[str, Any], Outcome, Evaluated]:
+    """Fit to all dyads: a row of `candidates`, rows of `estimates` and `tests`, and evidence for criteria."""
     model = task.candidate.model
     fitted = model.fit(dyads)
     convergence = fitted.convergence
     messages = [convergence.message] if convergence.message else []
-    evidence = list(_evidence(model, fitted, dyads)) if model.measure is not None else []
     if model.measure is None:
         messages.append("states a mean only, so it has no log-likelihood, no criteria and no log score")
+    evidence, evaluated = _evaluation(model, fitted, dyads)
     impossible = next((e["n_impossible"] for e in evidence if e["native"]), 0)
     if impossible:
         messages.append(f"{impossible} observed dyads are impossible under the fit")
@@ -133,31 +142,67 @@ def _full(task: Task, dyads: Dyads) -> tuple[dict[str, Any], Outcome]:
         "residual": convergence.residual,
         "message": "; ".join(messages),
     }
-    payload = {"candidates": row, "estimates": list(_estimate_rows(fitted.estimates)), "evidence": evidence}
-    return payload, Outcome("scored", _doubt(fitted))
+    tests = [{"test": test, **asdict(found)} for test, found in single_findings(model, fitted, dyads)]
+    estimates = list(_estimate_rows(fitted.estimates))
+    payload = {"candidates": row, "estimates": estimates, "evidence": evidence, "tests": tests}
+    return payload, Outcome("scored", _doubt(fitted)), evaluated
 
 
-def _evidence(model: Model, fitted: Fitted, dyads: Dyads) -> Iterator[dict[str, Any]]:
-    """Log-likelihoods on every footing, summed over row blocks so that no array grows with all dyads."""
-    law: Law = fitted  # type: ignore[assignment]  # a model with a measure promises a law; see the contract
+def _evaluation(model: Model, fitted: Fitted, dyads: Dyads) -> tuple[list[dict[str, Any]], Evaluated]:
+    """Evidence on every footing, and the arrays that tests of two candidates need, worked out in row blocks."""
     totals: dict[Footing, list[float]] = {}
+    kept: dict[str, list[Floats]] = {}
+    means: list[Floats] = []
+    chances: list[Floats] = []
     for block in dyads.blocks():
-        for found in log_densities(law.distribution(block), model.part, block, dyads):
+        if model.part is Part.JOINT:
+            means.append(fitted.expected_weight(block))
+        if model.measure is None:
+            continue
+        law = cast(Law, fitted).distribution(block)
+        if model.part is Part.JOINT:
+            chances.append(law.link_probability)
+        for found in log_densities(law, model.part, block, dyads):
             total = totals.setdefault(found.footing, [0.0, 0, 0])
             total[0] += float(found.values.sum())
             total[1] += len(found.values)
             total[2] += int(np.isneginf(found.values).sum())
+            if _is_maximum(found.footing, model.part):
+                kept.setdefault(found.footing.text, []).append(found.values)
+    evaluated = Evaluated.of(
+        fitted,
+        {text: np.concatenate(values) for text, values in kept.items()},
+        np.concatenate(means) if means else None,
+        np.concatenate(chances) if chances else None,
+    )
+    return list(_evidence(model, fitted, totals)), evaluated
+
+
+def _is_maximum(footing: Footing, part: Part) -> bool:
+    """Whether a likelihood is at its maximum there (through cells, nearly so).
+
+    The parts of a joint law are not maximised one by one, so only whole laws and one-part models are.
+    """
+    whole = Scope.GIVEN_LINKS if part is Part.WEIGHTS else Scope.WHOLE
+    return footing.scope is whole and (footing.measure is not Measure.LINKS or part is Part.LINKS)
+
+
+def _evidence(
+    model: Model, fitted: Fitted, totals: Mapping[Footing, list[float]]
+) -> Iterator[dict[str, Any]]:
+    """Log-likelihoods on every footing."""
+    if model.measure is None:
+        return
+    measure = cast(Law, fitted).measure
     whole = Scope.GIVEN_LINKS if model.part is Part.WEIGHTS else Scope.WHOLE
     for footing, (log_likelihood, n, impossible) in totals.items():
-        links = footing.measure is Measure.LINKS
-        native = footing.measure is law.measure and footing.scope is whole
+        native = footing.measure is measure and footing.scope is whole
         yield {
             "footing": footing.text,
             "native": native,
-            "shown_as": _shown_as(footing, law.measure, native),
-            # A criterion needs the maximum of the very likelihood that it is worked out from: the parts of a
-            # joint law are not maximised one by one, so only whole laws and one-part models have criteria.
-            "criteria": footing.scope is whole and (not links or model.part is Part.LINKS),
+            "shown_as": _shown_as(footing, measure, native),
+            # A criterion needs the maximum of the very likelihood that it is worked out from.
+            "criteria": _is_maximum(footing, model.part),
             "log_likelihood": log_likelihood,
             "n_parameters": fitted.n_parameters,
             "n_dyads": int(n),

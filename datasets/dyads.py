@@ -81,6 +81,25 @@ class Dyads:
         checked = self._checked(mask)
         return self._view(checked if self._mask is None else self._mask & checked, self._rows)
 
+    def with_column(self, name: str, values: Floats, /) -> Dyads:
+        """The same dyads with one covariate more, (n,) finite values; it is 0 on dyads outside the view.
+
+        Raises
+        ------
+        CovariateError : the name is taken, or the values are not n finite numbers
+        """
+        if name in self._columns:
+            raise CovariateError(f"the covariate '{name}' exists already; choose another name")
+        if values.shape != (len(self),) or not np.isfinite(values).all():
+            raise CovariateError(
+                f"the covariate '{name}' must have {len(self)} finite values, one for each dyad"
+            )
+        matrix = np.zeros((self.n_nodes, self.n_nodes))
+        matrix[self.origin, self.destination] = values
+        view = self._view(self._mask, self._rows)
+        view._columns = {**self._columns, name: CovariateColumn(matrix=matrix)}
+        return view
+
     def blocks(self, most: int = 1_000_000) -> Iterator[Dyads]:
         """The same dyads in consecutive row blocks of at most about `most` dyads (never less than a row)."""
         height = max(1, most // self.n_nodes)

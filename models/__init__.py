@@ -17,6 +17,7 @@ from steelyard.models.distributions import FlowDistribution
 from steelyard.models.errors import ModelError
 from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estimates, Status
 from steelyard.models.measure import Measure
+from steelyard.models.nesting import Reached
 from steelyard.models.registry import ModelClass, model_registry
 
 __all__ = [
@@ -37,6 +38,7 @@ __all__ = [
     "ModelError",
     "Need",
     "Part",
+    "Reached",
     "Requirements",
     "Status",
     "TwoPart",

@@ -75,13 +75,17 @@ def node_clustered_meat(scores: Floats, pairs: NodePairs) -> Floats:
     """
     low = np.minimum(pairs.origin, pairs.destination)
     high = np.maximum(pairs.origin, pairs.destination)
-    key, pair = np.unique(low * pairs.n_nodes + high, return_inverse=True)
-    node, both = (np.empty((size, scores.shape[1])) for size in (pairs.n_nodes, len(key)))
+    pair, n_pairs = low * pairs.n_nodes + high, pairs.n_nodes**2
+    if n_pairs > 8 * len(pair):
+        # Too few of the pairs are there to keep a place for each.
+        key, pair = np.unique(pair, return_inverse=True)
+        n_pairs = len(key)
+    node, both = (np.empty((size, scores.shape[1])) for size in (pairs.n_nodes, n_pairs))
     for column in range(scores.shape[1]):
         values = scores[:, column]
         out = np.bincount(pairs.origin, weights=values, minlength=pairs.n_nodes)
         node[:, column] = out + np.bincount(pairs.destination, weights=values, minlength=pairs.n_nodes)
-        both[:, column] = np.bincount(pair, weights=values, minlength=len(key))
+        both[:, column] = np.bincount(pair, weights=values, minlength=n_pairs)
     return np.asarray(node.T @ node - both.T @ both)
 
 

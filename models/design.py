@@ -44,27 +44,36 @@ def scaled_design(design: Floats) -> ScaledDesign:
     n, k = design.shape
     has_constant = k > 0 and bool((design[:, 0] == 1.0).all())
     centre = np.zeros(k)
-    if has_constant:
-        centre[1:] = design[:, 1:].mean(axis=0)
-    matrix = design - centre
-    spread = np.sqrt((matrix**2).mean(axis=0)) if n else np.zeros(k)
+    matrix, spread = np.empty((n, k), order="F"), np.zeros(k)
+    for column in range(k):
+        values = matrix[:, column]
+        values[:] = design[:, column]
+        if has_constant and column:
+            centre[column] = values.mean()
+            values -= centre[column]
+        spread[column] = np.sqrt(values @ values / n) if n else 0.0
     # A constant column centred leaves rounding noise; judge it against its own level.
     negligible = spread <= 1e-12 * np.maximum(np.abs(centre), 1e-300)
     scale = np.where(negligible, 1.0, spread)
-    matrix /= scale
-    matrix[:, negligible] = 0.0
+    for column in range(k):
+        if negligible[column]:
+            matrix[:, column] = 0.0
+        else:
+            matrix[:, column] /= scale[column]
     rounding = 4.0 * np.finfo(np.float64).eps * np.abs(design).max(axis=0, initial=0.0) / scale
     kept = _independent(matrix, rounding)
     back = np.zeros((k, len(kept)))
     back[kept, np.arange(len(kept))] = 1.0 / scale[kept]
     if has_constant:
         back[0] -= centre[kept] / scale[kept]
-    return ScaledDesign(np.asfortranarray(matrix[:, kept]), kept, back)
+    return ScaledDesign(matrix if len(kept) == k else np.asfortranarray(matrix[:, kept]), kept, back)
 
 
 def _independent(matrix: Floats, rounding: Floats) -> Integers:
     """Positions of the columns that are not combinations of earlier ones; `rounding` is (k,) for an entry."""
     n, k = matrix.shape
+    if n and k and _surely_independent(matrix, rounding):
+        return np.arange(k)
     basis = np.empty((n, 0))
     kept: list[int] = []
     for column in range(k):
@@ -79,3 +88,16 @@ def _independent(matrix: Floats, rounding: Floats) -> Integers:
             kept.append(column)
             basis = np.column_stack([basis, rest / left])
     return np.array(kept, dtype=np.int64)
+
+
+def _surely_independent(matrix: Floats, rounding: Floats) -> bool:
+    """Whether the correlations alone show that every column keeps at least a hundredth of its length.
+
+    The squared part that is left of a column is at least the smallest eigenvalue of the correlations, so that
+    most designs need no projections.
+    """
+    squares = matrix.T @ matrix
+    lengths = np.sqrt(np.diag(squares))
+    if (lengths == 0).any() or float(rounding.max(initial=0.0)) > 1e-3:
+        return False
+    return float(np.linalg.eigvalsh(squares / np.outer(lengths, lengths))[0]) > 1e-4

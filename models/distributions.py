@@ -9,19 +9,25 @@ from steelyard.models.amount_laws import LognormalLinkLaw
 from steelyard.models.cells import CellLaw
 from steelyard.models.count_laws import DispersionForm, GeometricLinkLaw, NegativeBinomialLaw, PoissonLaw
 from steelyard.models.flow_distribution import AmountsDistribution, FlowDistribution, as_amounts
+from steelyard.models.gamma_law import GammaLinkLaw
 from steelyard.models.hurdle_law import HurdleLaw
 from steelyard.models.link_law import LinkLaw
+from steelyard.models.truncated_law import ZeroTruncatedLaw
+from steelyard.models.zero_inflated_law import ZeroInflatedLaw
 
 __all__ = [
     "AmountsDistribution",
     "CellLaw",
     "DispersionForm",
     "FlowDistribution",
+    "GammaLinkLaw",
     "GeometricLinkLaw",
     "HurdleLaw",
     "LinkLaw",
     "LognormalLinkLaw",
     "NegativeBinomialLaw",
     "PoissonLaw",
+    "ZeroInflatedLaw",
+    "ZeroTruncatedLaw",
     "as_amounts",
 ]

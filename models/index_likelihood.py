@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Protocol, Self
 
 import numpy as np
 from scipy.linalg import block_diag
@@ -19,46 +18,12 @@ from steelyard.models.covariance import Covariances, NodePairs, covariances
 from steelyard.models.design import ScaledDesign, scaled_design
 from steelyard.models.errors import ModelError
 from steelyard.models.estimates import ErrorKind
+from steelyard.models.index_objective import IndexObjective, good_start
+from steelyard.models.index_protocol import Edges, IndexDerivatives, IndexLikelihood
 from steelyard.models.separation import MOVES, separating_direction
-from steelyard.models.solvers import Maximum, Slope, newton_maximise
+from steelyard.models.solvers import Maximum, newton_maximise
 
 __all__ = ["Edges", "IndexDerivatives", "IndexFit", "IndexLikelihood", "fit_indices"]
-
-
-@dataclass(frozen=True, eq=False)
-class Edges:
-    """(n,) which observations sit at the lower or the upper edge of what the first index can explain."""
-
-    lower: Bools
-    upper: Bools
-
-
-@dataclass(frozen=True, eq=False)
-class IndexDerivatives:
-    """Per observation: first (m, n) and second (m, m, n) derivatives with respect to the m indices."""
-
-    first: Floats
-    second: Floats
-
-
-class IndexLikelihood(Protocol):
-    """The log-likelihood of a fixed response as a function of m indices."""
-
-    @property
-    def edges(self) -> Edges:
-        """Which observations could drive the first index to infinity."""
-
-    def restricted(self, keep: Bools, /) -> Self:
-        """The same for some of the observations."""
-
-    def start(self, designs: Sequence[Floats], /) -> Floats:
-        """Coefficients, index after index, at which the likelihood is finite."""
-
-    def value(self, indices: Sequence[Floats], /) -> float:
-        """Sum over observations, up to a constant that depends on the response alone."""
-
-    def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
-        """Derivatives with respect to the indices."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -89,7 +54,11 @@ class IndexFit:
 
 
 def fit_indices(
-    likelihood: IndexLikelihood, designs: Sequence[Floats], pairs: NodePairs | None = None
+    likelihood: IndexLikelihood,
+    designs: Sequence[Floats],
+    pairs: NodePairs | None = None,
+    *,
+    errors: bool = True,
 ) -> IndexFit:
     """Maximise an index likelihood.
 
@@ -98,6 +67,7 @@ def fit_indices(
     likelihood : of n observations and m indices
     designs : m arrays (n, k); the first column is the constant 1 where the index has one
     pairs : nodes of each observation, for node-clustered covariance
+    errors : False leaves out all covariances, for a fit that only another one needs
 
     Returns
     -------
@@ -122,22 +92,24 @@ def fit_indices(
         directions.append(_on_original_columns(scaled[0], found))
         if not keep.any():
             return _all_separated(designs, directions)
-    scores = objective.scores(maximum.point)
-    some_pairs = None if pairs is None else _kept_pairs(pairs, keep)
-    kinds = covariances(maximum.information, scores, some_pairs) if maximum.convergence.converged else None
+    kinds = None
+    if errors and maximum.convergence.converged:
+        some_pairs = None if pairs is None else _kept_pairs(pairs, keep)
+        kinds = covariances(maximum.information, objective.scores(maximum.point), some_pairs)
     return _assembled(scaled, maximum.point, kinds, directions, ~keep, maximum.convergence)
 
 
 def _maximum_or_direction(
     likelihood: IndexLikelihood, scaled: Sequence[ScaledDesign]
-) -> tuple[_Indices, Maximum] | Floats:
+) -> tuple[IndexObjective, Maximum] | Floats:
     """Where the search ended, or a direction along which there is no maximum."""
     direction = _surely_separating(likelihood, scaled)
     if direction is not None:
         return direction
     _refuse_too_few(len(scaled[0].matrix), scaled)
-    objective = _Indices(likelihood, scaled)
-    maximum = newton_maximise(objective, likelihood.start(objective.matrices))
+    matrices = [s.matrix for s in scaled]
+    objective = IndexObjective.of(likelihood, matrices)
+    maximum = newton_maximise(objective, good_start(likelihood, matrices))
     # A separated search may also end with an information matrix that has rounded to singular, so that nothing
     # seems to move any more: every uncertified end is asked about.
     if not maximum.convergence.converged:
@@ -173,56 +145,13 @@ def _rank(scaled: Sequence[ScaledDesign]) -> int:
 def _refuse_too_few(n: int, scaled: Sequence[ScaledDesign]) -> None:
     rank = _rank(scaled)
     if n <= rank:
-        raise ModelError(
-            f"{n} observations cannot identify {rank} coefficients; use fewer covariates or more dyads"
-        )
+        observations = "1 observation" if n == 1 else f"{n} observations"
+        coefficients = "1 coefficient" if rank == 1 else f"{rank} coefficients"
+        raise ModelError(f"{observations} cannot identify {coefficients}; use fewer covariates or more dyads")
 
 
 def _kept_pairs(pairs: NodePairs, keep: Bools) -> NodePairs:
     return NodePairs(pairs.origin[keep], pairs.destination[keep], pairs.n_nodes)
-
-
-@dataclass(frozen=True, eq=False)
-class _Indices:
-    """The likelihood as a function of all scaled coefficients, index after index."""
-
-    likelihood: IndexLikelihood
-    scaled: Sequence[ScaledDesign]
-
-    @property
-    def matrices(self) -> list[Floats]:
-        return [s.matrix for s in self.scaled]
-
-    def _split(self, point: Floats) -> list[Floats]:
-        ends = np.cumsum([m.shape[1] for m in self.matrices])[:-1]
-        return np.split(point, ends)
-
-    def _indices(self, point: Floats) -> list[Floats]:
-        return [m @ part for m, part in zip(self.matrices, self._split(point), strict=True)]
-
-    def value(self, point: Floats) -> float:
-        with np.errstate(over="ignore", invalid="ignore"):
-            return self.likelihood.value(self._indices(point))
-
-    def movement(self, step: Floats) -> float:
-        return max(float(np.abs(change).max(initial=0.0)) for change in self._indices(step))
-
-    def scores(self, point: Floats) -> Floats:
-        first = self.likelihood.derivatives(self._indices(point)).first
-        return np.column_stack([f[:, None] * m for f, m in zip(first, self.matrices, strict=True)])
-
-    def slope(self, point: Floats) -> Slope:
-        matrices = self.matrices
-        with np.errstate(over="ignore", invalid="ignore"):
-            found = self.likelihood.derivatives(self._indices(point))
-            gradient = np.concatenate([m.T @ f for m, f in zip(matrices, found.first, strict=True)])
-            sizes = zip(matrices, found.first, strict=True)
-            scale = np.concatenate([np.abs(m).T @ np.abs(f) for m, f in sizes])
-            rows = [
-                np.hstack([-(a.T * found.second[i, j]) @ b for j, b in enumerate(matrices)])
-                for i, a in enumerate(matrices)
-            ]
-        return Slope(gradient, np.vstack(rows), scale)
 
 
 def _assembled(

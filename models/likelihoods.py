@@ -10,7 +10,7 @@ import numpy as np
 from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
-from steelyard.models.index_likelihood import Edges, IndexDerivatives
+from steelyard.models.index_protocol import Edges, IndexDerivatives, Rows
 from steelyard.models.special import deviance_term, negative_binomial_log_mass
 
 __all__ = [
@@ -23,6 +23,7 @@ __all__ = [
 ]
 
 SERIES_FROM = 100.0
+DIRECT_TO = 1000.0
 
 
 def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
@@ -45,7 +46,7 @@ class Poisson:
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> Poisson:
+    def restricted(self, keep: Rows, /) -> Poisson:
         return Poisson(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -53,9 +54,20 @@ class Poisson:
         mean = 0.5 * (self.response + max(float(self.response.mean()), 1e-300))
         return least_squares(designs[0], np.log(mean) + (self.response - mean) / mean, mean)
 
+    @cached_property
+    def _few_and_many(self) -> tuple[Floats, Bools]:
+        """Responses with 0 in place of large ones, and which are large."""
+        many = self.response > DIRECT_TO
+        return np.where(many, 0.0, self.response), many
+
     def value(self, indices: Sequence[Floats], /) -> float:
-        # Half the deviance, which keeps its digits at weights of 1e12.
-        return -float(np.sum(deviance_term(self.response, np.exp(indices[0]))))
+        index = indices[0]
+        mean = np.exp(index)
+        few, many = self._few_and_many
+        # Half the deviance keeps its digits at weights of 1e12; where the weights are small, w index - mean is as
+        # good, and quicker.
+        large = deviance_term(self.response[many], mean[many]) - mean[many]
+        return float(few @ index - mean.sum() - large.sum())
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         mean = np.exp(indices[0])
@@ -72,7 +84,7 @@ class Logit:
     def edges(self) -> Edges:
         return Edges(self.response == 0, self.response == 1)
 
-    def restricted(self, keep: Bools, /) -> Logit:
+    def restricted(self, keep: Rows, /) -> Logit:
         return Logit(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -101,7 +113,7 @@ class GeometricExcess:
     def edges(self) -> Edges:
         return Edges(self.response == 1, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> GeometricExcess:
+    def restricted(self, keep: Rows, /) -> GeometricExcess:
         return GeometricExcess(self.response[keep])
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
@@ -131,6 +143,21 @@ def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
     return first, t**2 / both + tails
 
 
+def _with_mean(w: Floats, index: Floats, mean: Floats, r: float) -> float:
+    """Sum of the parts of the log mass that hold the mean: w log(mean / r) - (w + r) log(1 + mean / r)."""
+    return float(w @ index - np.log(r) * w.sum() - (w + r) @ np.log1p(mean / r))
+
+
+def _beside_mean(values: Floats, r: float) -> Floats:
+    """(v,) the parts of the log mass that do not hold the mean, for distinct responses.
+
+    Read off the exact mass at mean = response, where it has no large terms.
+    """
+    at = np.maximum(values, 1.0)
+    with_mean = values * np.log(at / r) - (values + r) * np.log1p(at / r)
+    return negative_binomial_log_mass(values, at, np.full(len(values), r)) - with_mean
+
+
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
     """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
@@ -141,7 +168,7 @@ class NegativeBinomialQuadratic:
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
-    def restricted(self, keep: Bools, /) -> NegativeBinomialQuadratic:
+    def restricted(self, keep: Rows, /) -> NegativeBinomialQuadratic:
         return NegativeBinomialQuadratic(self.response[keep])
 
     @cached_property
@@ -161,28 +188,51 @@ class NegativeBinomialQuadratic:
         coefficients = least_squares(designs[0], index)
         return np.append(coefficients, np.log(np.clip(alpha, 0.05, 20.0)))
 
+    @cached_property
+    def _few_and_many(self) -> tuple[Bools, Bools]:
+        return self.response <= DIRECT_TO, self.response > DIRECT_TO
+
     def value(self, indices: Sequence[Floats], /) -> float:
-        # Any shortcut that adds up w log(mean) terms loses, at weights of 1e9, what the line search must see.
-        size = np.exp(-indices[1][0])
-        return float(np.sum(negative_binomial_log_mass(self.response, np.exp(indices[0]), size)))
+        index, size = indices[0], float(np.exp(-indices[1][0]))
+        mean = np.exp(index)
+        if not 1e-8 < size < 1e12:
+            return float(np.sum(negative_binomial_log_mass(self.response, mean, np.full_like(mean, size))))
+        # The sum of w log(mean) terms is quick, and good where w is small; at weights of 1e9 it would lose what
+        # the line search must see.
+        few, many = self._few_and_many
+        values, counts = self._distinct_few
+        total = float(counts @ _beside_mean(values, size))
+        if not many.any():
+            return total + _with_mean(self.response, index, mean, size)
+        total += _with_mean(self.response[few], index[few], mean[few], size)
+        large = negative_binomial_log_mass(self.response[many], mean[many], np.full(int(many.sum()), size))
+        return total + float(large.sum())
+
+    @cached_property
+    def _distinct_few(self) -> tuple[Floats, Floats]:
+        """Distinct small responses, and how often each occurs."""
+        values, counts = np.unique(self.response[self._few_and_many[0]], return_counts=True)
+        return values, counts.astype(np.float64)
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
         w, mean, r = self.response, np.exp(indices[0]), float(np.exp(-indices[1][0]))
-        values, inverse = self._distinct
         total = r + mean
+        share, rest = mean / total, r / total
+        by_mean = rest * (w - mean)
         if r < SERIES_FROM:
-            psi = (digamma(values + r) - digamma(r))[inverse]
-            psi_1 = (polygamma(1, values + r) - polygamma(1, r))[inverse]
-            by_size = psi - np.log1p(mean / r) + (mean - w) / total
-            by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
+            values, inverse = self._distinct
+            psi = r * (digamma(values + r) - digamma(r))
+            psi_1 = r**2 * (polygamma(1, values + r) - polygamma(1, r))
+            by_size = psi[inverse] - r * np.log1p(mean / r) - by_mean
+            curvature = psi_1[inverse] + r * share + rest * by_mean
         else:
-            by_size, by_size_2 = _nearly_poisson(w, mean, r)
-        first = np.stack([r * (w - mean) / total, -r * by_size])
-        second = np.empty((2, 2, len(w)))
-        second[0, 0] = -mean * r * (r + w) / total**2
-        second[0, 1] = second[1, 0] = -r * mean * (w - mean) / total**2
-        second[1, 1] = r * by_size + r**2 * by_size_2
-        return IndexDerivatives(first, second)
+            first, second = _nearly_poisson(w, mean, r)
+            by_size, curvature = r * first, r**2 * second
+        both = np.empty((2, 2, len(w)))
+        both[0, 0] = -share * rest * (r + w)
+        both[0, 1] = both[1, 0] = -share * by_mean
+        both[1, 1] = by_size + curvature
+        return IndexDerivatives(np.stack([by_mean, -by_size]), both)
 
 
 @dataclass(frozen=True, eq=False)
@@ -196,7 +246,7 @@ class LogNormal:
         none = np.zeros(len(self.response), dtype=bool)
         return Edges(none, none)
 
-    def restricted(self, keep: Bools, /) -> LogNormal:
+    def restricted(self, keep: Rows, /) -> LogNormal:
         return LogNormal(self.response[keep])
 
     @cached_property

@@ -9,12 +9,23 @@ from math import exp, inf, log
 import numpy as np
 
 from steelyard.datasets import Dyads, Floats
+from steelyard.models.contract import Convergence
 from steelyard.models.covariance import NodePairs
 from steelyard.models.estimates import ErrorKind, Estimate, EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import IndexFit
 from steelyard.models.separation import MOVES
 
-__all__ = ["REPAIRED", "LinearIndex", "index_estimates", "node_pairs", "per_unit", "scale_estimate"]
+__all__ = [
+    "CONSTANT",
+    "REPAIRED",
+    "LinearIndex",
+    "alpha_estimate",
+    "index_estimates",
+    "node_pairs",
+    "per_unit",
+    "scale_estimate",
+    "with_alpha_at_its_edge",
+]
 
 CONSTANT = "constant"
 REPAIRED = "node-clustered variance repaired: negative eigenvalues clipped to zero"
@@ -43,8 +54,15 @@ class LinearIndex:
     @classmethod
     def of(cls, fit: IndexFit, covariates: Sequence[str]) -> LinearIndex:
         """The first index of a fit."""
-        directions = tuple(tuple(d.tolist()) for d in fit.directions)
-        return cls(tuple(covariates), tuple(fit.coefficients[0].tolist()), directions)
+        return cls.from_coefficients(fit.coefficients[0], covariates, fit.directions)
+
+    @classmethod
+    def from_coefficients(
+        cls, coefficients: Floats, covariates: Sequence[str], directions: Sequence[Floats] = ()
+    ) -> LinearIndex:
+        """An index from its (1 + k,) finite coefficients and the directions of its infinite parts."""
+        infinite = tuple(tuple(d.tolist()) for d in directions)
+        return cls(tuple(covariates), tuple(coefficients.tolist()), infinite)
 
     def on(self, dyads: Dyads) -> Floats:
         """(n,) values of the index."""
@@ -73,21 +91,32 @@ def per_unit(fit: IndexFit, unit: float) -> IndexFit:
     return replace(fit, coefficients=(coefficients,), covariances=kinds)
 
 
-def index_estimates(fit: IndexFit, covariates: Sequence[str], part: EstimatePart) -> Estimates:
-    """Rows for the constant and slopes of the first index."""
+def index_estimates(
+    fit: IndexFit,
+    covariates: Sequence[str],
+    part: EstimatePart,
+    index: int = 0,
+    directions: Sequence[Floats] | None = None,
+) -> Estimates:
+    """Rows for the constant and slopes of an index; `directions` of the first one come with the fit."""
     names = (CONSTANT, *covariates)
+    before = sum(len(c) for c in fit.coefficients[:index])
     rows = []
     for position, name in enumerate(names):
-        along = next((d[position] for d in fit.directions if d[position] != 0.0), 0.0)
+        infinite = fit.directions if directions is None else directions
+        along = next((d[position] for d in infinite if d[position] != 0.0), 0.0)
         if along:
             note = "no finite estimate: the data are separated along it"
             rows.append(Estimate(part, name, inf if along > 0 else -inf, {}, Status.BOUNDARY, note=note))
-        elif position in fit.aliased[0]:
+        elif fit.separated.all():
+            note = "not estimated: every dyad is fixed at its limit, and none is left to say anything of it"
+            rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
+        elif position in fit.aliased[index]:
             note = "set aside: the terms before it already contain it"
             rows.append(Estimate(part, name, 0.0, {}, Status.FIXED, note=note))
         else:
-            value = float(fit.coefficients[0][position])
-            errors = _errors(fit, position, 1.0)
+            value = float(fit.coefficients[index][position])
+            errors = _errors(fit, before + position, 1.0)
             rows.append(Estimate(part, name, value, errors, note=_repair_note(fit)))
     return Estimates(tuple(rows))
 
@@ -97,6 +126,25 @@ def scale_estimate(fit: IndexFit, index: int, name: str, part: EstimatePart) -> 
     position = sum(len(c) for c in fit.coefficients[:index])
     value = exp(float(fit.coefficients[index][0]))
     return Estimate(part, name, value, _errors(fit, position, value), positive=True, note=_repair_note(fit))
+
+
+def alpha_estimate(fit: IndexFit, limit: str) -> Estimate:
+    """The row of a dispersion that may be at its edge 0, where the fit comes back with one index.
+
+    `limit` says which law is then the maximum.
+    """
+    if len(fit.coefficients) > 1:
+        return scale_estimate(fit, 1, "alpha", EstimatePart.DISPERSION)
+    note = f"no overdispersion: {limit}"
+    return Estimate(EstimatePart.DISPERSION, "alpha", 0.0, {}, Status.BOUNDARY, True, note)
+
+
+def with_alpha_at_its_edge(fit: IndexFit) -> Convergence:
+    """The certificate, which says so where the dispersion is at its edge 0."""
+    if len(fit.coefficients) > 1:
+        return fit.convergence
+    said = "; ".join(m for m in (fit.convergence.message, "alpha at its edge 0") if m)
+    return replace(fit.convergence, message=said)
 
 
 def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, float]:

@@ -18,11 +18,21 @@ BUILT_IN = MappingProxyType(
     {
         "configuration": "steelyard.models.maximum_entropy.configuration:ConfigurationModel",
         "density": "steelyard.models.maximum_entropy.density:DensityModel",
+        "gamma": "steelyard.models.econometric.gamma:GammaModel",
         "geometric": "steelyard.models.maximum_entropy.geometric:GeometricModel",
         "logit": "steelyard.models.econometric.logit:LogitModel",
         "lognormal": "steelyard.models.econometric.lognormal:LognormalModel",
         "negative_binomial": "steelyard.models.econometric.negative_binomial:NegativeBinomialModel",
         "poisson": "steelyard.models.econometric.poisson:PoissonModel",
+        "probit": "steelyard.models.econometric.probit:ProbitModel",
+        "truncated_negative_binomial": (
+            "steelyard.models.econometric.truncated_negative_binomial:TruncatedNegativeBinomialModel"
+        ),
+        "truncated_poisson": "steelyard.models.econometric.truncated_poisson:TruncatedPoissonModel",
+        "zero_inflated_negative_binomial": (
+            "steelyard.models.econometric.zero_inflated_negative_binomial:ZeroInflatedNegativeBinomialModel"
+        ),
+        "zero_inflated_poisson": "steelyard.models.econometric.zero_inflated_poisson:ZeroInflatedPoissonModel",
     }
 )
 # What a registered class must declare, and of which type.

@@ -73,22 +73,21 @@ def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> 
     """
     point, value = start, objective.value(start)
     slope = objective.slope(point)
-    movement = np.inf
     iterations = 0
     stalled = False
+    step = np.full_like(start, np.inf)
     while iterations < most and not stalled:
         step = _ascent_step(slope)
         decrement = float(slope.gradient @ step)
-        movement = objective.movement(step)
         iterations += 1
-        length = _step_length(objective, point, step, value, decrement)
+        length, gained = _step_length(objective, point, step, value, decrement)
         stalled = length == 0.0
         if not stalled:
-            point = point + length * step
-            value = objective.value(point)
+            point, value = point + length * step, gained
             slope = objective.slope(point)
-        if decrement <= DECREMENT_LIMIT**1.2 and movement <= MOVEMENT_LIMIT:
+        if decrement <= DECREMENT_LIMIT**1.2 and objective.movement(step) <= MOVEMENT_LIMIT:
             break
+    movement = objective.movement(step) if iterations else np.inf
     return _certified(point, value, slope, iterations, movement)
 
 
@@ -105,16 +104,18 @@ def _ascent_step(slope: Slope) -> Floats:
         return np.asarray(vectors @ ((vectors.T @ slope.gradient) / lifted))
 
 
-def _step_length(objective: Objective, point: Floats, step: Floats, value: float, decrement: float) -> float:
-    """The longest of 1, 1/2, 1/4, ... that gains what a concave function must; 0 when none does."""
+def _step_length(
+    objective: Objective, point: Floats, step: Floats, value: float, decrement: float
+) -> tuple[float, float]:
+    """The longest of 1, 1/2, 1/4, ... that gains what a concave function must, with the value there; else 0."""
     slack = 1e-13 * max(1.0, abs(value))
     length = 1.0
     for _ in range(60):
         trial = objective.value(point + length * step)
         if np.isfinite(trial) and trial >= value + 1e-4 * length * decrement - slack:
-            return length
+            return length, trial
         length /= 2.0
-    return 0.0
+    return 0.0, value
 
 
 def _certified(point: Floats, value: float, slope: Slope, iterations: int, movement: float) -> Maximum:

@@ -20,7 +20,14 @@ from scipy import special
 from steelyard.datasets.arrays import Floats
 from steelyard.models.special import deviance_term
 
-__all__ = ["TEMME_COEFFICIENTS", "negative_binomial_cdf", "poisson_cdf"]
+__all__ = [
+    "TEMME_COEFFICIENTS",
+    "gamma_upper",
+    "negative_binomial_cdf",
+    "negative_binomial_survival",
+    "poisson_cdf",
+    "poisson_survival",
+]
 
 #: Powers of eta (along a row) in the terms of order 1, 1/a and 1/a^2 of Temme's expansion.
 TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (
@@ -64,6 +71,15 @@ def _gamma_upper_large(a: Floats, x: Floats) -> Floats:
     return np.clip(upper, 0.0, 1.0)
 
 
+def gamma_upper(a: Floats, x: Floats, /) -> Floats:
+    """Regularised upper incomplete gamma function Q(a, x) for a > 0, x >= 0, arrays of one shape."""
+    upper: Floats = special.gammaincc(np.minimum(a, _TEMME_FROM), x)
+    large = a > _TEMME_FROM
+    if large.any():
+        upper[large] = _gamma_upper_large(a[large], x[large])
+    return upper
+
+
 def poisson_cdf(weights: Floats, mean: Floats, /) -> Floats:
     """Probability of at most `weights` under Poisson laws.
 
@@ -78,12 +94,32 @@ def poisson_cdf(weights: Floats, mean: Floats, /) -> Floats:
     """
     floor, mean = np.broadcast_arrays(np.floor(np.asarray(weights, dtype=np.float64)), mean)
     inside = (floor >= 0.0) & np.isfinite(floor)
-    a = np.where(inside, floor, 0.0) + 1.0
-    probability: Floats = special.gammaincc(np.minimum(a, _TEMME_FROM), mean)
-    large = a > _TEMME_FROM
-    if large.any():
-        probability[large] = _gamma_upper_large(a[large], mean[large])
+    probability = gamma_upper(np.where(inside, floor, 0.0) + 1.0, mean)
     return np.where(inside, probability, np.where(floor > 0.0, 1.0, 0.0))
+
+
+def _beta_tails(w: Floats, m: Floats, r: Floats, *, upper: bool) -> Floats:
+    """P(W <= w), or P(W > w), as incomplete beta functions of the smaller of the two shares of m + r.
+
+    The small share carries its digits, one minus the other does not.
+    """
+    of_mean, of_size = (special.betainc, special.betaincc) if upper else (special.betaincc, special.betainc)
+    tail = np.empty_like(w)
+    low = m < r
+    tail[low] = of_mean(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
+    low = ~low
+    tail[low] = of_size(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
+    return tail
+
+
+def poisson_survival(weights: Floats, mean: Floats, /) -> Floats:
+    """Probability of more than `weights` >= 0 under Poisson laws with means up to 1e5, digits kept where small."""
+    return np.asarray(special.gammainc(np.floor(weights) + 1.0, mean))
+
+
+def negative_binomial_survival(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
+    """Probability of more than `weights` >= 0, digits kept where it is small; arrays of one shape, size finite."""
+    return _beta_tails(np.floor(weights), mean, size, upper=True)
 
 
 def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
@@ -103,16 +139,9 @@ def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Flo
     mixed = (mean > 0.0) & (size < _POISSON_FROM * np.maximum(mean, 1.0))
     floor = np.floor(weights)
     inside = (floor >= 0.0) & np.isfinite(floor)
-    probability = np.where(inside, 1.0, np.where(floor > 0.0, 1.0, 0.0))
+    probability = np.where(floor >= 0.0, 1.0, 0.0)
     few = mixed & inside
-    w, m, r = floor[few], mean[few], size[few]
-    # the small one of the two shares carries its digits, one minus the other does not
-    mixture = np.empty_like(w)
-    low = m < r
-    mixture[low] = special.betaincc(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
-    low = ~low
-    mixture[low] = special.betainc(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
-    probability[few] = mixture
+    probability[few] = _beta_tails(floor[few], mean[few], size[few], upper=False)
     rest = ~mixed
     if rest.any():
         probability[rest] = poisson_cdf(weights[rest], mean[rest])

@@ -15,6 +15,7 @@ from steelyard.reports.frames import RunTables, read_tables
 from steelyard.reports.pooling import PooledScore, pool_scores
 from steelyard.reports.readings import candidate_table, criteria_table, ranking_table, score_table
 from steelyard.reports.side_by_side import side_by_side_tables
+from steelyard.reports.specification import specification_tables
 from steelyard.reports.summary import caution_sentences, compared_sentences, outcome_sentence
 from steelyard.reports.tables import Table
 from steelyard.reports.verdicts import verdict_sentences
@@ -59,6 +60,7 @@ class Document:
     candidates: Table
     side_by_side: tuple[Table, ...]
     estimates: tuple[CandidateEstimates, ...]
+    tests: tuple[Table, ...]
 
 
 def build_document(tables: Mapping[str, pd.DataFrame], facts: ReportFacts) -> Document:
@@ -94,6 +96,7 @@ def build_document(tables: Mapping[str, pd.DataFrame], facts: ReportFacts) -> Do
         candidates=candidate_table(run.candidates, facts),
         side_by_side=side_by_side_tables(run.candidates, run.estimates),
         estimates=candidate_estimates(run.candidates, run.estimates),
+        tests=specification_tables(run.candidates, run.tests),
     )
 
 

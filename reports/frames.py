@@ -18,10 +18,13 @@ __all__ = [
     "OutcomeRow",
     "RunTables",
     "ScoreRow",
+    "SpecificationRow",
     "read_tables",
 ]
 
-Row = TypeVar("Row", "CandidateRow", "CriterionRow", "EstimateRow", "OutcomeRow", "ScoreRow")
+Row = TypeVar(
+    "Row", "CandidateRow", "CriterionRow", "EstimateRow", "OutcomeRow", "ScoreRow", "SpecificationRow"
+)
 
 NODE_PREFIX = "node:"
 
@@ -113,15 +116,28 @@ class OutcomeRow:
     reason: str
 
 
+@dataclass(frozen=True, slots=True)
+class SpecificationRow:
+    """A row of `tests`: one test of specification; without a statistic, its note says why."""
+
+    candidate: str
+    test: str
+    against: str
+    statistic: float
+    p_value: float
+    note: str
+
+
 @dataclass(frozen=True)
 class RunTables:
-    """The five tables a report reads; a table that was not given has no rows."""
+    """The six tables a report reads; a table that was not given has no rows."""
 
     candidates: tuple[CandidateRow, ...]
     criteria: tuple[CriterionRow, ...]
     estimates: tuple[EstimateRow, ...]
     scores: tuple[ScoreRow, ...]
     outcomes: tuple[OutcomeRow, ...]
+    tests: tuple[SpecificationRow, ...]
 
 
 def read_tables(tables: Mapping[str, pd.DataFrame]) -> RunTables:
@@ -141,6 +157,7 @@ def read_tables(tables: Mapping[str, pd.DataFrame]) -> RunTables:
         estimates=_rows(tables, "estimates", EstimateRow),
         scores=_rows(tables, "scores", ScoreRow),
         outcomes=_rows(tables, "outcomes", OutcomeRow),
+        tests=_rows(tables, "tests", SpecificationRow),
     )
 
 

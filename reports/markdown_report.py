@@ -24,6 +24,8 @@ def render_markdown_report(document: Document) -> str:
         blocks += _section(section)
     blocks += ["## Candidates", render_markdown(document.candidates)]
     blocks += _estimates(document)
+    if document.tests:
+        blocks += ["## Specification tests", *map(render_markdown, document.tests)]
     blocks += _methods(facts.methods)
     if facts.provenance:
         blocks += ["## Provenance", *_pairs(facts.provenance)]

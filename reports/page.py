@@ -44,7 +44,7 @@ def write_reports(
     ----------
     directory : folder to write into; made if missing. Figures and tidy tables that an earlier run left in
         figures/ and tables/ and that this one does not have are removed; all other files are left alone
-    tables : tidy tables by name (candidates, criteria, estimates, scores, outcomes are read; all become CSV)
+    tables : tidy tables by name (candidates, criteria, estimates, scores, tests, outcomes are read; all become CSV)
     facts : title, data, methods, provenance, notes
     formats : HTML writes report.html, MARKDOWN report.md, either of them figures/*.svg, pdf and png;
         CSV writes tables/<name>.csv

@@ -1,8 +1,9 @@
-"""Negative-binomial regression of counts on all dyads, quadratic variance (form 2)."""
+"""Negative-binomial regression of counts on all dyads, with either form of the variance."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
+from types import MappingProxyType
 from typing import ClassVar
 
 import numpy as np
@@ -11,22 +12,33 @@ from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
 from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import DispersionForm, NegativeBinomialLaw
-from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
+from steelyard.models.errors import ModelError
+from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import NegativeBinomialQuadratic, Poisson
-from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
+from steelyard.models.linear_dispersion import NegativeBinomialLinear
+from steelyard.models.linear_index import (
+    LinearIndex,
+    alpha_estimate,
+    index_estimates,
+    node_pairs,
+    with_alpha_at_its_edge,
+)
 from steelyard.models.measure import Measure
 from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
 
+FORMS = MappingProxyType({1: DispersionForm.LINEAR, 2: DispersionForm.QUADRATIC})
+
 
 @dataclass(frozen=True)
 class FittedNegativeBinomial:
-    """Mean exp(index) and variance mean + alpha mean^2 on every dyad."""
+    """Mean exp(index) and variance mean + alpha mean^2, or mean (1 + alpha), on every dyad."""
 
     index: LinearIndex
     alpha: float
+    form: DispersionForm
     estimates: Estimates
     n_parameters: int
     convergence: Convergence
@@ -36,32 +48,48 @@ class FittedNegativeBinomial:
         return np.exp(self.index.on(dyads))
 
     def distribution(self, dyads: Dyads, /) -> NegativeBinomialLaw:
-        return NegativeBinomialLaw(self.expected_weight(dyads), self.alpha, DispersionForm.QUADRATIC)
+        return NegativeBinomialLaw(self.expected_weight(dyads), self.alpha, self.form)
 
 
-def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | None = None) -> IndexFit:
-    """Fit plain arrays; the second index is the constant log alpha.
+def fit_negative_binomial(
+    response: Floats,
+    design: Floats,
+    pairs: NodePairs | None = None,
+    form: DispersionForm = DispersionForm.QUADRATIC,
+    *,
+    errors: bool = True,
+) -> IndexFit:
+    """Fit plain arrays; the second index is the constant log alpha. Without `errors`, no covariances.
 
     Where the likelihood is highest at alpha = 0, the Poisson fit is the maximum, and it comes back with one
     index instead of two. The slope at alpha = 0 alone does not say so: the likelihood may fall there and rise
     again to a higher maximum inside, so in that case both are fitted and compared.
     """
-    poisson = fit_indices(Poisson(response), [design], pairs)
+    quadratic = form is DispersionForm.QUADRATIC
+    poisson = fit_indices(Poisson(response), [design], errors=False)
     mean = _mean(poisson, design)
-    # Slope of the log-likelihood in alpha at alpha = 0, times two.
-    falls = float(np.sum((response - mean) ** 2 - response)) <= 0.0
+    falls = _slope_at_zero(response, mean, quadratic=quadratic) <= 0.0
     if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
-        return poisson
-    inside = fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
+        return fit_indices(Poisson(response), [design], pairs, errors=errors)
+    likelihood = NegativeBinomialQuadratic(response) if quadratic else NegativeBinomialLinear(response)
+    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs, errors=errors)
     if not falls:
         return inside
-    if not inside.convergence.converged:
-        return poisson
-    size = np.exp(-inside.coefficients[1][0])
-    gain = negative_binomial_log_mass(response, _mean(inside, design), size) - poisson_log_mass(
-        response, mean
-    )
-    return inside if float(gain.sum()) > 0.0 else poisson
+    if inside.convergence.converged and inside.rank:
+        fitted, alpha = _mean(inside, design), float(np.exp(inside.coefficients[1][0]))
+        size = np.full_like(fitted, 1.0 / alpha) if quadratic else fitted / alpha
+        gain = negative_binomial_log_mass(response, fitted, size) - poisson_log_mass(response, mean)
+        if float(gain.sum()) > 0.0:
+            return inside
+    return fit_indices(Poisson(response), [design], pairs, errors=errors)
+
+
+def _slope_at_zero(response: Floats, mean: Floats, *, quadratic: bool) -> float:
+    """Slope of the log-likelihood in alpha at alpha = 0, times two."""
+    spread = (response - mean) ** 2 - response
+    if quadratic:
+        return float(np.sum(spread))
+    return float(np.sum(spread[mean > 0] / mean[mean > 0]))
 
 
 def _mean(found: IndexFit, design: Floats) -> Floats:
@@ -74,14 +102,20 @@ def _mean(found: IndexFit, design: Floats) -> Floats:
 
 @dataclass(frozen=True)
 class NegativeBinomialModel:
-    """Counts with log-linear mean and variance mean + alpha mean^2, zeros included.
+    """Counts with log-linear mean and a variance above it, zeros included.
 
     Parameters
     ----------
     covariates : names of the covariates that enter the log of the mean beside a constant
+    form : 2 for the variance mean + alpha mean^2, 1 for mean (1 + alpha)
+
+    Raises
+    ------
+    ModelError : another form
     """
 
     covariates: tuple[str, ...]
+    form: int = 2
 
     name: ClassVar[str] = "negative_binomial"
     family: ClassVar[Family] = Family.ECONOMETRIC
@@ -93,32 +127,37 @@ class NegativeBinomialModel:
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
         "Counts on every dyad, zeros included, are Poisson around a mean that itself varies (gamma) from dyad "
-        "to dyad, so the variance grows with the square of the mean."
+        "to dyad, so the variance grows with the square of the mean (form 2) or in proportion to it (form 1)."
     )
-    formula: ClassVar[str] = "mean m, variance m + alpha m^2,  log m = constant + sum of slope x covariate"
+    formula: ClassVar[str] = (
+        "mean m, variance m + alpha m^2 (form 2, the default) or m (1 + alpha) (form 1),  log m = constant + sum of "
+        "slope x covariate"
+    )
     parameters: ClassVar[str] = "maximum likelihood; covariates + 1, and alpha unless it is at its edge 0"
     caution: ClassVar[str] = (
         "Its estimates depend on the unit of the flows. One alpha serves both the zeros and the spread of the "
-        "weights, so a good fit of one may be paid for in the other."
+        "weights, so a good fit of one may be paid for in the other. Slopes of form 1 are consistent only if its law "
+        "is right."
     )
     sources: ClassVar[str] = "Cameron & Trivedi (1998); Bosquet & Boulhol (2014) on the unit"
 
+    def __post_init__(self) -> None:
+        if self.form not in FORMS:
+            raise ModelError(
+                f"the form of a negative binomial must be 1 (variance m (1 + alpha)) or 2 (variance m + alpha m^2); "
+                f"got {self.form!r}"
+            )
+
     def fit(self, dyads: Dyads, /) -> FittedNegativeBinomial:
         """Maximum likelihood on all of these dyads, zeros included."""
-        found = fit_negative_binomial(dyads.counts, dyads.design(self.covariates), node_pairs(dyads))
-        slopes = index_estimates(found, self.covariates, EstimatePart.JOINT)
-        convergence = found.convergence
-        if len(found.coefficients) == 1:
-            note = "no overdispersion: the maximum is the Poisson law"
-            alpha = Estimate(EstimatePart.DISPERSION, "alpha", 0.0, {}, Status.BOUNDARY, True, note)
-            said = "; ".join(m for m in (convergence.message, "alpha at its edge 0") if m)
-            convergence = replace(convergence, message=said)
-        else:
-            alpha = scale_estimate(found, 1, "alpha", EstimatePart.DISPERSION)
+        form = FORMS[self.form]
+        found = fit_negative_binomial(dyads.counts, dyads.design(self.covariates), node_pairs(dyads), form)
+        alpha = alpha_estimate(found, "the maximum is the Poisson law")
         return FittedNegativeBinomial(
             index=LinearIndex.of(found, self.covariates),
             alpha=alpha.value,
-            estimates=slopes + Estimates((alpha,)),
+            form=form,
+            estimates=index_estimates(found, self.covariates, EstimatePart.JOINT) + Estimates((alpha,)),
             n_parameters=found.rank,
-            convergence=convergence,
+            convergence=with_alpha_at_its_edge(found),
         )

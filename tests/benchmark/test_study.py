@@ -37,6 +37,11 @@ label = "P"
 model = "poisson"
 covariates = "gravity"
 """
+ZIP = """
+[[candidates]]
+model = "zero_inflated_poisson"
+covariates = "gravity"
+"""
 
 
 def study(text: str):
@@ -61,6 +66,20 @@ def test_a_study_becomes_objects() -> None:
     assert found.candidates[0].model.covariates == ("origin_size", "distance")
     assert (found.validation[0].folds, found.validation[0].repeats, found.validation[0].seed) == (4, 2, 1)
     assert found.network.n_nodes == 60
+
+
+def test_options_reach_their_models() -> None:
+    """Inflation takes a specification's name or a list of names, and is the constant alone where it is not given."""
+    text = HEAD + ZIP + 'label = "a"\n' + ZIP + 'label = "b"\ninflation = "gravity"\n'
+    text += ZIP + 'label = "c"\ninflation = ["distance"]\n'
+    text += POISSON.replace("poisson", "negative_binomial").replace('"P"', '"d"') + "form = 1\n"
+    first, second, third, fourth = (c.model for c in study(text).candidates)
+    assert (first.inflation, second.inflation, third.inflation) == (
+        (),
+        ("origin_size", "distance"),
+        ("distance",),
+    )
+    assert fourth.form == 1
 
 
 def test_a_grid_expands_to_every_pair() -> None:
@@ -109,6 +128,18 @@ BROKEN = {
     "unknown model": (
         HEAD + POISSON.replace('"poisson"', '"poison"'),
         ["candidates 1", "'P'", "poison", "'poisson'"],
+    ),
+    "unknown covariate of the inflation": (
+        HEAD + ZIP + 'inflation = ["distanc"]\n',
+        ["candidates 1", "no covariate 'distanc'", "did you mean 'distance'"],
+    ),
+    "unknown specification of the inflation": (
+        HEAD + ZIP + 'inflation = "gravit"\n',
+        ["candidates 1", "no specification 'gravit'", "did you mean 'gravity'"],
+    ),
+    "another form": (
+        HEAD + POISSON.replace("poisson", "negative_binomial") + "form = 3\n",
+        ["candidates 1", "must be 1", "or 2", "got 3"],
     ),
     "unknown option": (HEAD + POISSON + "speed = 3\n", ["candidates 1", "no option 'speed'"]),
     "no covariates": (

@@ -236,6 +236,7 @@ def public_values(dyads: Dyads) -> dict[str, Any]:
             "design": lambda f: f(list(COVARIATES)).tolist(),
             "node_sums": lambda f: [s.tolist() for s in f(dyads.weights)],
             "select": lambda f: f(np.ones((6, 6), dtype=bool)).weights.tolist(),
+            "with_column": lambda f: f("new", np.zeros(len(dyads))).weights.tolist(),
             "blocks": lambda f: [block.weights.tolist() for block in f(6)],
         }
         found[name] = calls[name](member) if callable(member) else np.asarray(member).tolist()

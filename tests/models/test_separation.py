@@ -207,3 +207,29 @@ def test_lognormal_amounts_cannot_be_separated() -> None:
     design = np.column_stack([np.ones(20), np.arange(20.0)])
     edges = LogNormal(np.arange(1.0, 21.0)).edges
     assert separating_direction(scaled_design(design).matrix, edges.lower, edges.upper) is None
+
+
+@pytest.mark.parametrize("seed", range(10))
+@pytest.mark.parametrize("link", [0.0, 1.0])
+def test_where_every_dyad_is_at_its_limit_only_the_constant_moves(seed: int, link: float) -> None:
+    """Any direction that stays within the sample would do, but an unseen dyad further out must not be sent the
+    other way by a column about which the data say nothing."""
+    rng = np.random.default_rng(seed)
+    design = np.column_stack([np.ones(30), rng.lognormal(size=(30, 3))])
+    found = logit_fit(design, np.full(30, link))
+    (direction,) = found.directions
+    np.testing.assert_array_equal(direction[1:], 0.0)
+    assert np.sign(direction[0]) == (1.0 if link else -1.0)
+
+
+def test_the_sparsest_of_the_farthest_directions() -> None:
+    """Zeros wherever a dummy is 1, and a second column that only those rows hold: the dummy alone moves."""
+    rng = np.random.default_rng(9)
+    n = 60
+    dummy = (np.arange(n) < 15).astype(float)
+    only_there = dummy * np.where(np.arange(n) % 2, 1.0, -1.0)
+    design = np.column_stack([np.ones(n), dummy, only_there])
+    counts = np.where(dummy == 1, 0.0, rng.poisson(3.0, size=n) + 1.0)
+    found = fit_indices(Poisson(counts), [design])
+    assert found.directions[0][1] < 0
+    assert found.directions[0][2] == 0.0
