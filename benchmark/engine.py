@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Any
 
 from joblib import Parallel, cpu_count, delayed, parallel_config
+from threadpoolctl import threadpool_limits
 from tqdm import tqdm
 
 from steelyard.benchmark.assembly import assemble
@@ -58,7 +59,9 @@ def run(
         raise StudyError(f"jobs must be at least 1; got {jobs}")
     tasks = study_tasks(study)
     facts = report_facts(study)
-    with Ledger(ledger or Path(":memory:")) as book:
+    # One inner thread, in this process as in the workers: the linear algebra here is small, and how a sum is split
+    # between threads would show in the last digits.
+    with threadpool_limits(limits=1), Ledger(ledger or Path(":memory:")) as book:
         covariates = repr(sorted(study.covariates.items()))
         keys = [task_key(task, study.dyads, covariates) for task in tasks]
         pairs = StudyPairs.of(tasks, keys, book)
@@ -110,7 +113,6 @@ def _done(
 ) -> Iterator[tuple[str, TaskResult]]:
     """Do the missing tasks, yielding each as it is finished."""
     workers = min(jobs, len(missing))
-    # One inner thread each: the linear algebra here is small, and more threads than cores only wait.
     setting = parallel_config("loky", inner_max_num_threads=1) if workers > 1 else nullcontext()
     with setting:
         pool = Parallel(n_jobs=max(workers, 1), return_as="generator_unordered")

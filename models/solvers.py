@@ -15,6 +15,8 @@ __all__ = ["Maximum", "Objective", "Slope", "newton_maximise"]
 
 RESIDUAL_LIMIT = 1e-8
 DECREMENT_LIMIT = 1e-10
+# The square of a distance in standard errors: a step of 1e-10 of them is not worth an evaluation.
+NEGLIGIBLE = 1e-20
 # Under separation each Newton step moves some linear index by about 1 for ever; at a true maximum the steps
 # shrink quadratically. So the size of the last step, in index units, tells the two apart.
 MOVEMENT_LIMIT = 1e-6
@@ -79,6 +81,8 @@ def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> 
     while iterations < most and not stalled:
         step = _ascent_step(slope)
         decrement = float(slope.gradient @ step)
+        if iterations and 0 <= decrement <= NEGLIGIBLE and objective.movement(step) <= MOVEMENT_LIMIT:
+            break
         iterations += 1
         length, gained = _step_length(objective, point, step, value, decrement)
         stalled = length == 0.0

@@ -7,6 +7,7 @@ from types import MappingProxyType
 from typing import ClassVar
 
 import numpy as np
+from scipy.special import gammaln
 
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
@@ -29,6 +30,8 @@ from steelyard.models.special import negative_binomial_log_mass, poisson_log_mas
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
 
+# From here on it is worth showing by a bound that the Poisson fit need not be made.
+BOUND_FROM = 5_000
 FORMS = MappingProxyType({1: DispersionForm.LINEAR, 2: DispersionForm.QUADRATIC})
 
 
@@ -66,13 +69,18 @@ def fit_negative_binomial(
     again to a higher maximum inside, so in that case both are fitted and compared.
     """
     quadratic = form is DispersionForm.QUADRATIC
+    inside = None
+    if len(response) >= BOUND_FROM:
+        inside = _inside(response, design, pairs, form, errors=errors)
+        if inside.convergence.converged and _surely_above_poisson(inside, response, design, form):
+            return inside
     poisson = fit_indices(Poisson(response), [design], errors=False)
     mean = _mean(poisson, design)
     falls = _slope_at_zero(response, mean, quadratic=quadratic) <= 0.0
     if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
         return fit_indices(Poisson(response), [design], pairs, errors=errors)
-    likelihood = NegativeBinomialQuadratic(response) if quadratic else NegativeBinomialLinear(response)
-    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs, errors=errors)
+    if inside is None:
+        inside = _inside(response, design, pairs, form, errors=errors)
     if not falls:
         return inside
     if inside.convergence.converged and inside.rank:
@@ -82,6 +90,42 @@ def fit_negative_binomial(
         if float(gain.sum()) > 0.0:
             return inside
     return fit_indices(Poisson(response), [design], pairs, errors=errors)
+
+
+def _inside(
+    response: Floats, design: Floats, pairs: NodePairs | None, form: DispersionForm, *, errors: bool
+) -> IndexFit:
+    """The fit with a dispersion above 0."""
+    quadratic = form is DispersionForm.QUADRATIC
+    likelihood = NegativeBinomialQuadratic(response) if quadratic else NegativeBinomialLinear(response)
+    return fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs, errors=errors)
+
+
+def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, form: DispersionForm) -> bool:
+    """Whether no Poisson fit reaches this likelihood, shown by a bound that costs less than the fit.
+
+    For any means m > 0 with the same X'm = X'w the Poisson log-likelihood of every coefficient is at most
+    sum(m log m - m - log w!). One Newton step from the means at hand gives such m, if it leaves them positive.
+    """
+    if found.separated.any() or len(found.coefficients) < 2:
+        return False
+    mean, alpha = np.exp(design @ found.coefficients[0]), float(np.exp(found.coefficients[1][0]))
+    columns = design[:, [i for i in range(design.shape[1]) if i not in found.aliased[0]]]
+    scale = np.abs(columns).max(axis=0)
+    information = (columns.T * mean) @ columns / np.outer(scale, scale)
+    try:
+        step = np.linalg.solve(information, columns.T @ (response - mean) / scale) / scale
+    except np.linalg.LinAlgError:
+        return False
+    moved = mean * (1.0 + columns @ step)
+    if not (moved > 0).all():
+        return False
+    bound = float(moved @ np.log(moved) - moved.sum() - gammaln(response + 1.0).sum())
+    size = np.full_like(mean, 1.0 / alpha) if form is DispersionForm.QUADRATIC else mean / alpha
+    reached = float(negative_binomial_log_mass(response, mean, size).sum())
+    rounding = 1e-12 * float(response @ np.abs(np.log(np.maximum(response, 1.0)))) + 1e-9 * abs(reached)
+    off = float(np.abs(columns.T @ (response - moved) / scale).max()) / max(1.0, float(response.sum()))
+    return off < 1e-9 and bound + 1.0 + rounding < reached
 
 
 def _slope_at_zero(response: Floats, mean: Floats, *, quadratic: bool) -> float:
