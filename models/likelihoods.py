@@ -11,7 +11,7 @@ from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
 from steelyard.models.index_protocol import Edges, IndexDerivatives, Rows
-from steelyard.models.special import deviance_term, negative_binomial_log_mass
+from steelyard.models.special import deviance_term, log_one_plus, negative_binomial_log_mass
 
 __all__ = [
     "GeometricExcess",
@@ -143,15 +143,11 @@ def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
     return first, t**2 / both + tails
 
 
-def _with_mean(w: Floats, index: Floats, mean: Floats, r: float) -> float:
-    """Sum of the parts of the log mass that hold the mean: w log(mean / r) - (w + r) log(1 + mean / r)."""
-    return float(w @ index - np.log(r) * w.sum() - (w + r) @ np.log1p(mean / r))
-
-
 def _beside_mean(values: Floats, r: float) -> Floats:
-    """(v,) the parts of the log mass that do not hold the mean, for distinct responses.
+    """(v,) the log mass less w log(mean / r) - (w + r) log(1 + mean / r), for distinct responses.
 
-    Read off the exact mass at mean = response, where it has no large terms.
+    Those are the parts that hold the mean; the rest is read off the exact mass at mean = response, where it has no
+    large terms.
     """
     at = np.maximum(values, 1.0)
     with_mean = values * np.log(at / r) - (values + r) * np.log1p(at / r)
@@ -189,8 +185,10 @@ class NegativeBinomialQuadratic:
         return np.append(coefficients, np.log(np.clip(alpha, 0.05, 20.0)))
 
     @cached_property
-    def _few_and_many(self) -> tuple[Bools, Bools]:
-        return self.response <= DIRECT_TO, self.response > DIRECT_TO
+    def _few_and_many(self) -> tuple[Floats, Floats, Bools]:
+        """Responses with 0 in place of large ones, 1 where they are not large, and which are."""
+        many = self.response > DIRECT_TO
+        return np.where(many, 0.0, self.response), (~many).astype(np.float64), many
 
     def value(self, indices: Sequence[Floats], /) -> float:
         index, size = indices[0], float(np.exp(-indices[1][0]))
@@ -199,19 +197,22 @@ class NegativeBinomialQuadratic:
             return float(np.sum(negative_binomial_log_mass(self.response, mean, np.full_like(mean, size))))
         # The sum of w log(mean) terms is quick, and good where w is small; at weights of 1e9 it would lose what
         # the line search must see.
-        few, many = self._few_and_many
+        few, are_few, many = self._few_and_many
         values, counts = self._distinct_few
+        beyond = log_one_plus(mean / size)
         total = float(counts @ _beside_mean(values, size))
-        if not many.any():
-            return total + _with_mean(self.response, index, mean, size)
-        total += _with_mean(self.response[few], index[few], mean[few], size)
-        large = negative_binomial_log_mass(self.response[many], mean[many], np.full(int(many.sum()), size))
-        return total + float(large.sum())
+        total += float(few @ index - np.log(size) * few.sum() - few @ beyond - size * (are_few @ beyond))
+        if many.any():
+            large = negative_binomial_log_mass(
+                self.response[many], mean[many], np.full(int(many.sum()), size)
+            )
+            total += float(large.sum())
+        return total
 
     @cached_property
     def _distinct_few(self) -> tuple[Floats, Floats]:
         """Distinct small responses, and how often each occurs."""
-        values, counts = np.unique(self.response[self._few_and_many[0]], return_counts=True)
+        values, counts = np.unique(self.response[~self._few_and_many[2]], return_counts=True)
         return values, counts.astype(np.float64)
 
     def derivatives(self, indices: Sequence[Floats], /) -> IndexDerivatives:
@@ -223,7 +224,7 @@ class NegativeBinomialQuadratic:
             values, inverse = self._distinct
             psi = r * (digamma(values + r) - digamma(r))
             psi_1 = r**2 * (polygamma(1, values + r) - polygamma(1, r))
-            by_size = psi[inverse] - r * np.log1p(mean / r) - by_mean
+            by_size = psi[inverse] - r * log_one_plus(mean / r) - by_mean
             curvature = psi_1[inverse] + r * share + rest * by_mean
         else:
             first, second = _nearly_poisson(w, mean, r)

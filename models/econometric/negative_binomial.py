@@ -96,9 +96,15 @@ def _inside(
     response: Floats, design: Floats, pairs: NodePairs | None, form: DispersionForm, *, errors: bool
 ) -> IndexFit:
     """The fit with a dispersion above 0."""
-    quadratic = form is DispersionForm.QUADRATIC
-    likelihood = NegativeBinomialQuadratic(response) if quadratic else NegativeBinomialLinear(response)
-    return fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs, errors=errors)
+    return fit_indices(
+        _likelihood(response, form), [design, np.ones((len(response), 1))], pairs, errors=errors
+    )
+
+
+def _likelihood(response: Floats, form: DispersionForm) -> NegativeBinomialQuadratic | NegativeBinomialLinear:
+    if form is DispersionForm.QUADRATIC:
+        return NegativeBinomialQuadratic(response)
+    return NegativeBinomialLinear(response)
 
 
 def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, form: DispersionForm) -> bool:
@@ -109,7 +115,8 @@ def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, for
     """
     if found.separated.any() or len(found.coefficients) < 2:
         return False
-    mean, alpha = np.exp(design @ found.coefficients[0]), float(np.exp(found.coefficients[1][0]))
+    index = design @ found.coefficients[0]
+    mean = np.exp(index)
     columns = design[:, [i for i in range(design.shape[1]) if i not in found.aliased[0]]]
     scale = np.abs(columns).max(axis=0)
     information = (columns.T * mean) @ columns / np.outer(scale, scale)
@@ -121,8 +128,7 @@ def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, for
     if not (moved > 0).all():
         return False
     bound = float(moved @ np.log(moved) - moved.sum() - gammaln(response + 1.0).sum())
-    size = np.full_like(mean, 1.0 / alpha) if form is DispersionForm.QUADRATIC else mean / alpha
-    reached = float(negative_binomial_log_mass(response, mean, size).sum())
+    reached = _likelihood(response, form).value([index, np.full_like(index, found.coefficients[1][0])])
     rounding = 1e-12 * float(response @ np.abs(np.log(np.maximum(response, 1.0)))) + 1e-9 * abs(reached)
     off = float(np.abs(columns.T @ (response - moved) / scale).max()) / max(1.0, float(response.sum()))
     return off < 1e-9 and bound + 1.0 + rounding < reached

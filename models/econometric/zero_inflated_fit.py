@@ -6,19 +6,18 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy.optimize import linprog
 
-from steelyard.datasets.arrays import Bools, Floats
+from steelyard.datasets.arrays import Floats
 from steelyard.models.contract import Convergence
 from steelyard.models.count_laws import DispersionForm, NegativeBinomialLaw, PoissonLaw
 from steelyard.models.covariance import NodePairs
-from steelyard.models.design import scaled_design
+from steelyard.models.econometric.inflation_limits import FAR, gain_of_certain_zeros, limit_direction
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
 from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import Poisson
 from steelyard.models.linear_index import CONSTANT, LinearIndex, index_estimates, scale_estimate
-from steelyard.models.separation import MOVES, separating_direction
+from steelyard.models.separation import MOVES
 from steelyard.models.zero_inflated_law import ZeroInflatedLaw
 from steelyard.models.zero_inflated_likelihood import ZeroInflated
 
@@ -30,10 +29,10 @@ __all__ = [
     "part_estimates",
 ]
 
-# Log odds beyond this are on their way to a limit: the likelihood has no more than 1e-6 of itself to gain.
-FAR = 14.0
 MOST_LIMITS = 4
 SMALL_ALPHA = 0.02
+# A gain in log-likelihood that puts a maximum in doubt.
+MATTERS = 1e-6
 
 
 @dataclass(frozen=True, eq=False)
@@ -102,7 +101,22 @@ def fit_zero_inflated(
     plain = _plain(response, designs[0], pairs, dispersed=dispersed, errors=False)
     if _better(best, plain) is plain:
         best = _plain(response, designs[0], pairs, dispersed=dispersed, errors=True)
+        best = _doubted(best, response, designs)
     return replace(best, dispersed=dispersed)
+
+
+def _doubted(plain: ZeroInflatedFit, response: Floats, designs: Sequence[Floats]) -> ZeroInflatedFit:
+    """The plain law as the maximum, unless making a few zeros certain is plainly better: then it is not one."""
+    law = _law(np.full(len(response), -np.inf), _index(plain.found, designs[0]), plain.alpha)
+    n_certain, gain = gain_of_certain_zeros(designs[1], law.log_density(np.zeros(len(response))), response)
+    if gain <= MATTERS:
+        return plain
+    said = (
+        f"no maximum was found: inflation of all dyads falls to nothing, and yet the likelihood gains {gain:.2g} in a "
+        f"limit that makes {n_certain} zeros certain and inflates no other dyad; use fewer inflation covariates"
+    )
+    convergence = replace(plain.found.convergence, converged=False, message=said)
+    return replace(plain, found=replace(plain.found, convergence=convergence, covariances={}))
 
 
 def _better(best: ZeroInflatedFit, rival: ZeroInflatedFit) -> ZeroInflatedFit:
@@ -151,7 +165,7 @@ def _with_limits(
         index = designs[1] @ found.coefficients[1]
         limit = None
         if not found.convergence.converged and len(directions) < MOST_LIMITS:
-            limit = _limit_direction(designs[1], index, free, response)
+            limit = limit_direction(designs[1], index, free, response)
         if limit is None:
             return _finished(response, designs, found, directions, odds, dispersed=dispersed)
         move = designs[1] @ limit
@@ -159,45 +173,6 @@ def _with_limits(
         moved = free & (np.abs(move) > tolerance)
         odds[moved] = np.copysign(np.inf, move[moved])
         directions.append(limit)
-
-
-def _limit_direction(design: Floats, index: Floats, free: Bools, response: Floats) -> Floats | None:
-    """A direction of the inflation coefficients along which the likelihood rises to a limit; None if none is sure.
-
-    Either one that costs no observation anything: positive flows do not go up, zeros do not go down. Or, where log
-    odds have run below -FAR and none beyond FAR, one that takes the inflation from those and moves no other. A
-    search that has run off both ways would have to choose which zeros are always zero; there may be several such
-    limits, and none is taken.
-    """
-    scaled = scaled_design(design[free])
-    zero = response[free] == 0
-    found = separating_direction(scaled.matrix, ~zero, zero)
-    if found is None:
-        down = index[free] < -FAR
-        if not down.any() or (index[free] > FAR).any():
-            return None
-        found = _moving_only(scaled.matrix, down)
-    if found is None:
-        return None
-    exact = np.where(np.abs(found) > 1e-9, found, 0.0)
-    original = scaled.back @ exact
-    return np.where(np.abs(original) > 1e-9 * (np.abs(scaled.back) @ np.abs(exact)), original, 0.0)
-
-
-def _moving_only(matrix: Floats, down: Bools) -> Floats | None:
-    """A direction that moves some observations down and does not move the rest, by a linear programme."""
-    still = np.unique(matrix[~down], axis=0)
-    moved = np.unique(matrix[down], axis=0)
-    answer = linprog(
-        np.zeros(matrix.shape[1]),
-        A_ub=moved,
-        b_ub=np.full(len(moved), -1.0),
-        A_eq=still if len(still) else None,
-        b_eq=np.zeros(len(still)) if len(still) else None,
-        bounds=(None, None),
-        method="highs",
-    )
-    return np.asarray(answer.x) if answer.status == 0 else None
 
 
 def _finished(

@@ -50,7 +50,9 @@ def _linear(w: Floats, parts: Parts) -> Floats:
 def _truncated(log_mass: Callable[[Floats, Parts], Floats]) -> Callable[[Floats, Parts], Floats]:
     def given_a_link(w: Floats, parts: Parts) -> Floats:
         zero = log_mass(np.zeros(len(w)), parts)
-        return log_mass(w, parts) - np.log(-np.expm1(zero))
+        seen = -np.expm1(zero)
+        # Where all mass is on zero, what is left of it is rounding: such points are void.
+        return np.where(seen > 1e-8, log_mass(w, parts) - np.log(seen), np.inf)
 
     return given_a_link
 
