@@ -10,6 +10,7 @@ from statsmodels.discrete.count_model import ZeroInflatedPoisson
 from steelyard.datasets import Floats
 from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import DispersionForm, NegativeBinomialLaw, PoissonLaw, ZeroInflatedLaw
+from steelyard.models.econometric.inflation_limits import gain_of_certain_zeros
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
 from steelyard.models.econometric.zero_inflated_fit import (
     ZeroInflatedFit,
@@ -254,11 +255,11 @@ def test_no_inflation_on_some_dyads_is_a_limit() -> None:
     assert below[2] == pytest.approx(fit.log_likelihood, abs=1e-5)
 
 
-def test_plain_counts_are_no_maximum_where_a_few_zeros_can_be_singled_out() -> None:
+def test_zeros_that_can_be_singled_out() -> None:
     """Counts less spread than a Poisson, and three zeros beyond all flows along an inflation covariate.
 
-    Making those three certain gains minus the sum of their log probabilities, so that the plain law, to which the
-    search falls, is not the maximum; with the constant alone there is nothing to single out.
+    Making those three certain gains minus the sum of their log probabilities, so that the plain law is no maximum;
+    with the constant alone there is nothing to single out.
     """
     rng = np.random.default_rng(2)
     n = 300
@@ -266,16 +267,18 @@ def test_plain_counts_are_no_maximum_where_a_few_zeros_can_be_singled_out() -> N
     z = rng.uniform(-1.0, 1.0, size=n)
     w[:3], z[:3] = 0.0, [5.0, 5.5, 6.0]
     design = np.ones((n, 1))
-    fit = fit_zero_inflated(w, [design, np.column_stack([np.ones(n), z])], dispersed=False)
+    inflation = np.column_stack([np.ones(n), z])
+    fit = fit_zero_inflated(w, [design, inflation], dispersed=False)
+    assert not fit.convergence.converged
+    assert "3 of them to always zero" in fit.convergence.message
+    assert not fit.found.covariances
     constant_only = fit_zero_inflated(w, [design, design], dispersed=False)
     assert constant_only.convergence.converged
     assert not constant_only.inflated
-    mean = float(np.exp(constant_only.found.coefficients[0][0]))
-    if fit.convergence.converged:
-        assert fit.log_likelihood > constant_only.log_likelihood + 2.9 * mean
-    else:
-        assert "makes 3 zeros certain" in fit.convergence.message or "ran off" in fit.convergence.message
-        assert not fit.found.covariances
+    log_zero = np.full(n, -float(np.exp(constant_only.found.coefficients[0][0])))
+    assert gain_of_certain_zeros(inflation, log_zero, w) == (3, pytest.approx(-3 * log_zero[0]))
+    assert gain_of_certain_zeros(design, log_zero, w) == (0, 0.0)
+    assert fit.log_likelihood == pytest.approx(constant_only.log_likelihood - 3 * log_zero[0], abs=0.6)
 
 
 def test_limits_that_others_pay_for_are_refused_by_name() -> None:
