@@ -23,6 +23,7 @@ BUILT_IN = MappingProxyType(
         "lognormal": "steelyard.models.econometric.lognormal:LognormalModel",
         "negative_binomial": "steelyard.models.econometric.negative_binomial:NegativeBinomialModel",
         "poisson": "steelyard.models.econometric.poisson:PoissonModel",
+        "probit": "steelyard.models.econometric.probit:ProbitModel",
     }
 )
 # What a registered class must declare, and of which type.
