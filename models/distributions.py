@@ -9,6 +9,7 @@ from steelyard.models.amount_laws import LognormalLinkLaw
 from steelyard.models.cells import CellLaw
 from steelyard.models.count_laws import DispersionForm, GeometricLinkLaw, NegativeBinomialLaw, PoissonLaw
 from steelyard.models.flow_distribution import AmountsDistribution, FlowDistribution, as_amounts
+from steelyard.models.gamma_law import GammaLinkLaw
 from steelyard.models.hurdle_law import HurdleLaw
 from steelyard.models.link_law import LinkLaw
 
@@ -17,6 +18,7 @@ __all__ = [
     "CellLaw",
     "DispersionForm",
     "FlowDistribution",
+    "GammaLinkLaw",
     "GeometricLinkLaw",
     "HurdleLaw",
     "LinkLaw",

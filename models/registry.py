@@ -18,6 +18,7 @@ BUILT_IN = MappingProxyType(
     {
         "configuration": "steelyard.models.maximum_entropy.configuration:ConfigurationModel",
         "density": "steelyard.models.maximum_entropy.density:DensityModel",
+        "gamma": "steelyard.models.econometric.gamma:GammaModel",
         "geometric": "steelyard.models.maximum_entropy.geometric:GeometricModel",
         "logit": "steelyard.models.econometric.logit:LogitModel",
         "lognormal": "steelyard.models.econometric.lognormal:LognormalModel",

@@ -18,9 +18,9 @@ import numpy as np
 from scipy import special
 
 from steelyard.datasets.arrays import Floats
-from steelyard.models.special import deviance_term
+from steelyard.models.special import deviance_term, stirling_error
 
-__all__ = ["TEMME_COEFFICIENTS", "negative_binomial_cdf", "poisson_cdf"]
+__all__ = ["TEMME_COEFFICIENTS", "log_gamma_tails", "negative_binomial_cdf", "poisson_cdf"]
 
 #: Powers of eta (along a row) in the terms of order 1, 1/a and 1/a^2 of Temme's expansion.
 TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (
@@ -47,7 +47,19 @@ TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (
 )
 
 _TEMME_FROM = 1e5
+_TEMME_ETA = 0.2
+_LEAST_PROBABILITY = 1e-280  # below, a probability may have underflowed and its logarithm is worked out apart
+_HALF_LOG_TWO_PI = 0.9189385332046727418
+_MOST_TERMS = 10_000
 _POISSON_FROM = 1e20  # sizes this many times the mean: the negative binomial is Poisson to all digits
+
+
+def _temme_series(a: Floats, eta: Floats) -> Floats:
+    """Sum of Temme's expansion in powers of 1 / a."""
+    series = np.zeros_like(eta)
+    for row in reversed(TEMME_COEFFICIENTS):
+        series = series / a + np.polynomial.polynomial.polyval(eta, row)
+    return series
 
 
 def _gamma_upper_large(a: Floats, x: Floats) -> Floats:
@@ -55,10 +67,7 @@ def _gamma_upper_large(a: Floats, x: Floats) -> Floats:
     squared = 2.0 * deviance_term(a, x)  # a eta^2
     z = np.copysign(np.sqrt(squared), x - a)
     # beyond |eta| = 0.2 the correction is below 1e-800, so the polynomials need not hold there
-    eta = np.clip(z / np.sqrt(a), -0.2, 0.2)
-    series = np.zeros_like(eta)
-    for row in reversed(TEMME_COEFFICIENTS):
-        series = series / a + np.polynomial.polynomial.polyval(eta, row)
+    series = _temme_series(a, np.clip(z / np.sqrt(a), -_TEMME_ETA, _TEMME_ETA))
     with np.errstate(under="ignore"):
         upper: Floats = special.ndtr(-z) + np.exp(-0.5 * squared) / np.sqrt(2.0 * np.pi * a) * series
     return np.clip(upper, 0.0, 1.0)
@@ -117,3 +126,94 @@ def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Flo
     if rest.any():
         probability[rest] = poisson_cdf(weights[rest], mean[rest])
     return probability
+
+
+def log_gamma_tails(shape: Floats, ratio: Floats, /) -> tuple[Floats, Floats]:
+    """Logarithms of both tails of a gamma law, each to full relative precision however small it is.
+
+    Parameters
+    ----------
+    shape : (n,) array, finite, > 0
+    ratio : (n,) array >= 0, a weight divided by the mean of its law; may be infinite
+
+    Returns
+    -------
+    (n,) arrays: log P(weight <= ratio x mean) and log P(weight > ratio x mean).
+    """
+    shape, ratio = np.broadcast_arrays(shape, np.asarray(ratio, dtype=np.float64))
+    lower, upper = np.full(shape.shape, -np.inf), np.zeros(shape.shape)
+    lower[ratio == np.inf], upper[ratio == np.inf] = 0.0, -np.inf
+    inside = (ratio > 0.0) & (ratio < np.inf)
+    a, r = shape[inside], ratio[inside]
+    large = (a > _TEMME_FROM) & (2.0 * _shortfall(r) < _TEMME_ETA**2)
+    low, high = np.empty_like(a), np.empty_like(a)
+    low[large], high[large] = _log_tails_large(a[large], r[large])
+    low[~large], high[~large] = _log_tails_plain(a[~large], r[~large])
+    lower[inside], upper[inside] = low, high
+    return lower, upper
+
+
+def _log_tails_large(a: Floats, ratio: Floats) -> tuple[Floats, Floats]:
+    """Both log tails by Temme's expansion, the correction taken relative to the normal tail."""
+    z = np.copysign(np.sqrt(2.0 * a * _shortfall(ratio)), ratio - 1.0)
+    share = _temme_series(a, z / np.sqrt(a)) / np.sqrt(a)
+    log_density = -0.5 * z * z - _HALF_LOG_TWO_PI
+    lower, upper = special.log_ndtr(z), special.log_ndtr(-z)
+    with np.errstate(over="ignore", invalid="ignore", under="ignore"):
+        below = np.log1p(-share * np.exp(np.minimum(log_density - lower, 700.0)))
+        above = np.log1p(share * np.exp(np.minimum(log_density - upper, 700.0)))
+    return lower + below, upper + above
+
+
+def _shortfall(ratio: Floats) -> Floats:
+    """ratio - 1 - log(ratio)."""
+    return deviance_term(np.ones_like(ratio), ratio)
+
+
+def _log_tails_plain(a: Floats, ratio: Floats) -> tuple[Floats, Floats]:
+    """Both log tails by the incomplete gamma functions, or by series where those underflow."""
+    with np.errstate(over="ignore", under="ignore"):
+        x = a * ratio
+        below, above = special.gammainc(a, x), special.gammaincc(a, x)
+    tails: list[Floats] = []
+    for tail, other, small in ((below, above, _log_lower_series), (above, below, _log_upper_fraction)):
+        with np.errstate(divide="ignore"):
+            log_tail = np.where(other < 0.5, np.log1p(-other), np.log(tail))
+        few = tail < _LEAST_PROBABILITY
+        log_tail[few] = small(a[few], ratio[few])
+        tails.append(log_tail)
+    return tails[0], tails[1]
+
+
+def _log_kernel(a: Floats, ratio: Floats) -> Floats:
+    """log of x^a exp(-x) / Gamma(a + 1) with x = a ratio: a deviance and a Stirling error, no large terms."""
+    return -a * _shortfall(ratio) - 0.5 * np.log(a) - _HALF_LOG_TWO_PI - stirling_error(a)
+
+
+def _log_lower_series(a: Floats, ratio: Floats) -> Floats:
+    """log P(a, x) for x well below a: kernel times 1 + x / (a + 1) + x^2 / ((a + 1) (a + 2)) + ..."""
+    x = a * ratio
+    total, term = np.ones_like(x), np.ones_like(x)
+    for k in range(1, _MOST_TERMS):
+        term = term * x / (a + k)
+        total += term
+        if (term <= 1e-17 * total).all():
+            break
+    return _log_kernel(a, ratio) + np.log(total)
+
+
+def _log_upper_fraction(a: Floats, ratio: Floats) -> Floats:
+    """log Q(a, x) for x well above a: kernel times a over Legendre's continued fraction, by Lentz's method."""
+    x = np.minimum(a * ratio, 1e300)
+    b = x + 1.0 - a
+    c, d = np.full_like(x, 1e300), 1.0 / b
+    total = d.copy()
+    for k in range(1, _MOST_TERMS):
+        step = -k * (k - a)
+        b = b + 2.0
+        d = 1.0 / (step * d + b)
+        c = b + step / c
+        total *= c * d
+        if (np.abs(c * d - 1.0) <= 1e-16).all():
+            break
+    return _log_kernel(a, ratio) + np.log(a) + np.log(total)
