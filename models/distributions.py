@@ -12,6 +12,7 @@ from steelyard.models.flow_distribution import AmountsDistribution, FlowDistribu
 from steelyard.models.gamma_law import GammaLinkLaw
 from steelyard.models.hurdle_law import HurdleLaw
 from steelyard.models.link_law import LinkLaw
+from steelyard.models.truncated_laws import LogarithmicSeriesLinkLaw, ZeroTruncatedLaw
 
 __all__ = [
     "AmountsDistribution",
@@ -22,8 +23,10 @@ __all__ = [
     "GeometricLinkLaw",
     "HurdleLaw",
     "LinkLaw",
+    "LogarithmicSeriesLinkLaw",
     "LognormalLinkLaw",
     "NegativeBinomialLaw",
     "PoissonLaw",
+    "ZeroTruncatedLaw",
     "as_amounts",
 ]

@@ -25,6 +25,7 @@ BUILT_IN = MappingProxyType(
         "negative_binomial": "steelyard.models.econometric.negative_binomial:NegativeBinomialModel",
         "poisson": "steelyard.models.econometric.poisson:PoissonModel",
         "probit": "steelyard.models.econometric.probit:ProbitModel",
+        "truncated_poisson": "steelyard.models.econometric.truncated_poisson:TruncatedPoissonModel",
     }
 )
 # What a registered class must declare, and of which type.

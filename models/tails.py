@@ -20,7 +20,7 @@ from scipy import special
 from steelyard.datasets.arrays import Floats
 from steelyard.models.special import deviance_term, stirling_error
 
-__all__ = ["TEMME_COEFFICIENTS", "log_gamma_tails", "negative_binomial_cdf", "poisson_cdf"]
+__all__ = ["TEMME_COEFFICIENTS", "log_gamma_tails", "negative_binomial_cdf", "negative_binomial_upper", "poisson_cdf"]
 
 #: Powers of eta (along a row) in the terms of order 1, 1/a and 1/a^2 of Temme's expansion.
 TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (
@@ -126,6 +126,35 @@ def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Flo
     if rest.any():
         probability[rest] = poisson_cdf(weights[rest], mean[rest])
     return probability
+
+
+def negative_binomial_upper(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
+    """Probability of more than `weights`, to full relative precision where it is small.
+
+    Parameters
+    ----------
+    weights : (..., n) array of whole numbers >= 0, or infinity
+    mean : (n,) array, finite, > 0
+    size : (n,) array, > 0; infinity gives the Poisson law
+
+    Returns
+    -------
+    array of the joint shape, within [0, 1].
+    """
+    weights, mean, size = np.broadcast_arrays(np.asarray(weights, dtype=np.float64), mean, size)
+    upper = np.zeros(weights.shape)
+    inside = (weights >= 0.0) & (weights < np.inf)
+    mixed = inside & (size < _POISSON_FROM * np.maximum(mean, 1.0))
+    w, m, r = weights[mixed], mean[mixed], size[mixed]
+    low = m < r
+    probability = np.empty_like(w)
+    probability[low] = special.betainc(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
+    low = ~low
+    probability[low] = special.betaincc(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
+    upper[mixed] = probability
+    rest = inside & ~mixed
+    upper[rest] = special.gammainc(weights[rest] + 1.0, mean[rest])
+    return upper
 
 
 def log_gamma_tails(shape: Floats, ratio: Floats, /) -> tuple[Floats, Floats]:
