@@ -25,6 +25,9 @@ BUILT_IN = MappingProxyType(
         "negative_binomial": "steelyard.models.econometric.negative_binomial:NegativeBinomialModel",
         "poisson": "steelyard.models.econometric.poisson:PoissonModel",
         "probit": "steelyard.models.econometric.probit:ProbitModel",
+        "truncated_negative_binomial": (
+            "steelyard.models.econometric.truncated_negative_binomial:TruncatedNegativeBinomialModel"
+        ),
         "truncated_poisson": "steelyard.models.econometric.truncated_poisson:TruncatedPoissonModel",
     }
 )

@@ -20,7 +20,13 @@ from scipy import special
 from steelyard.datasets.arrays import Floats
 from steelyard.models.special import deviance_term, stirling_error
 
-__all__ = ["TEMME_COEFFICIENTS", "log_gamma_tails", "negative_binomial_cdf", "negative_binomial_upper", "poisson_cdf"]
+__all__ = [
+    "TEMME_COEFFICIENTS",
+    "log_gamma_tails",
+    "negative_binomial_cdf",
+    "negative_binomial_upper",
+    "poisson_cdf",
+]
 
 #: Powers of eta (along a row) in the terms of order 1, 1/a and 1/a^2 of Temme's expansion.
 TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (

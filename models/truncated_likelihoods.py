@@ -28,6 +28,9 @@ __all__ = ["LogarithmicSeries", "TruncatedNegativeBinomial", "TruncatedPoisson",
 
 _SERIES_BELOW = 0.1
 _MOST_FOR_START = 2_000
+_SHIFTS = (1.0, 0.0, -1.0, -3.0, -6.0)
+_LOG_ALPHAS = (-4.0, -2.0, -0.5, 0.5, 1.5, 3.0, 6.0)
+_LOG_ALPHAS_NEARBY = tuple(float(a) for a in range(-30, 2))
 
 
 def truncated_poisson_excess(mean: Floats) -> Floats:
@@ -128,35 +131,43 @@ class LogarithmicSeries:
 
 @dataclass(frozen=True, eq=False)
 class TruncatedNegativeBinomial:
-    """Counts >= 1: negative binomial with mean exp(index 1) and alpha = exp(index 2), given that it is not zero."""
+    """Counts >= 1: negative binomial with mean exp(index 1) and alpha = exp(index 2), given that it is not zero.
+
+    Parameters
+    ----------
+    response : (n,) counts
+    near : (n,) a first index near which the maximum may lie, such as that of the truncated Poisson
+    """
 
     response: Floats
+    near: Floats | None = None
 
     @property
     def edges(self) -> Edges:
         return _ones_are_lowest(self.response)
 
     def restricted(self, keep: Bools, /) -> TruncatedNegativeBinomial:
-        return TruncatedNegativeBinomial(self.response[keep])
+        return TruncatedNegativeBinomial(self.response[keep], None if self.near is None else self.near[keep])
 
     @cached_property
     def _untruncated(self) -> NegativeBinomialQuadratic:
         return NegativeBinomialQuadratic(self.response)
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
-        """A log fit, lowered and given the dispersion that make it most likely, among a few of each.
+        """The most likely of a few: a log fit, lowered by several amounts, and the index nearby.
 
         The lower the untruncated mean, the more zeros were cut off; where alpha is large that is nearly all.
+        Large and nearly Poisson counts need the index nearby, for there alpha may be anything down to 1 / mean.
         """
         index = designs[0] @ least_squares(designs[0], np.log(self.response))
+        grid = [(index + shift, a) for shift, a in product(_SHIFTS, _LOG_ALPHAS)]
+        if self.near is not None:
+            grid += [(self.near, a) for a in _LOG_ALPHAS_NEARBY]
         some = slice(None, None, max(1, len(index) // _MOST_FOR_START))
         part = TruncatedNegativeBinomial(self.response[some])
         ones = np.ones_like(index[some])
-        shift, log_alpha = max(
-            product((1.0, 0.0, -1.0, -3.0, -6.0), (-4.0, -2.0, -0.5, 0.5, 1.5, 3.0, 6.0)),
-            key=lambda pair: part.value([index[some] + pair[0], pair[1] * ones]),
-        )
-        return np.append(least_squares(designs[0], index + shift), log_alpha)
+        best, log_alpha = max(grid, key=lambda pair: part.value([pair[0][some], pair[1] * ones]))
+        return np.append(least_squares(designs[0], best), log_alpha)
 
     def value(self, indices: Sequence[Floats], /) -> float:
         size = np.exp(-indices[1])
