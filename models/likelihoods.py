@@ -11,6 +11,7 @@ from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
 from steelyard.models.index_likelihood import Edges, IndexDerivatives
+from steelyard.models.size_derivatives import SERIES_FROM, nearly_poisson
 from steelyard.models.special import deviance_term, negative_binomial_log_mass
 
 __all__ = [
@@ -21,8 +22,6 @@ __all__ = [
     "Poisson",
     "least_squares",
 ]
-
-SERIES_FROM = 100.0
 
 
 def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
@@ -117,20 +116,6 @@ class GeometricExcess:
         return _one_index((self.response - 1) * rest - y, -self.response * y * rest)
 
 
-def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
-    """First and second derivative of the log mass in a large size r, without differences of nearly equal terms.
-
-    The logarithms of the digamma series meet log(1 + mean / r) in log(1 + t) - t, t = (w - mean) / (r + mean).
-    """
-    both, total = w + r, mean + r
-    t = (w - mean) / total
-    gap = [(1 / r) ** k - (1 / both) ** k for k in range(8)]
-    first = w / (2 * r * both) - deviance_term(np.ones_like(t), both / total)
-    first += gap[2] / 12 - gap[4] / 120 + gap[6] / 252
-    tails = -(gap[2] / 2 + gap[3] / 6 - gap[5] / 30 + gap[7] / 42)
-    return first, t**2 / both + tails
-
-
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
     """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
@@ -176,7 +161,7 @@ class NegativeBinomialQuadratic:
             by_size = psi - np.log1p(mean / r) + (mean - w) / total
             by_size_2 = psi_1 + mean / (r * total) - (mean - w) / total**2
         else:
-            by_size, by_size_2 = _nearly_poisson(w, mean, r)
+            by_size, by_size_2 = nearly_poisson(w, mean, r)
         first = np.stack([r * (w - mean) / total, -r * by_size])
         second = np.empty((2, 2, len(w)))
         second[0, 0] = -mean * r * (r + w) / total**2

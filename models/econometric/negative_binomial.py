@@ -1,8 +1,9 @@
-"""Negative-binomial regression of counts on all dyads, quadratic variance (form 2)."""
+"""Negative-binomial regression of counts on all dyads: variance mean + alpha mean^2, or mean (1 + alpha)."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from types import MappingProxyType
 from typing import ClassVar
 
 import numpy as np
@@ -11,22 +12,27 @@ from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
 from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import DispersionForm, NegativeBinomialLaw
+from steelyard.models.errors import ModelError
 from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import NegativeBinomialQuadratic, Poisson
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
 from steelyard.models.measure import Measure
-from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
+from steelyard.models.negative_binomial_linear import NegativeBinomialLinear
+from steelyard.models.special import poisson_log_mass
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
+
+_FORMS = MappingProxyType({1: DispersionForm.LINEAR, 2: DispersionForm.QUADRATIC})
 
 
 @dataclass(frozen=True)
 class FittedNegativeBinomial:
-    """Mean exp(index) and variance mean + alpha mean^2 on every dyad."""
+    """Mean exp(index) on every dyad, and variance mean + alpha mean^2 or mean (1 + alpha)."""
 
     index: LinearIndex
     alpha: float
+    form: DispersionForm
     estimates: Estimates
     n_parameters: int
     convergence: Convergence
@@ -36,10 +42,15 @@ class FittedNegativeBinomial:
         return np.exp(self.index.on(dyads))
 
     def distribution(self, dyads: Dyads, /) -> NegativeBinomialLaw:
-        return NegativeBinomialLaw(self.expected_weight(dyads), self.alpha, DispersionForm.QUADRATIC)
+        return NegativeBinomialLaw(self.expected_weight(dyads), self.alpha, self.form)
 
 
-def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | None = None) -> IndexFit:
+def fit_negative_binomial(
+    response: Floats,
+    design: Floats,
+    pairs: NodePairs | None = None,
+    form: DispersionForm = DispersionForm.QUADRATIC,
+) -> IndexFit:
     """Fit plain arrays; the second index is the constant log alpha.
 
     Where the likelihood is highest at alpha = 0, the Poisson fit is the maximum, and it comes back with one
@@ -48,20 +59,27 @@ def fit_negative_binomial(response: Floats, design: Floats, pairs: NodePairs | N
     """
     poisson = fit_indices(Poisson(response), [design], pairs)
     mean = _mean(poisson, design)
-    # Slope of the log-likelihood in alpha at alpha = 0, times two.
-    falls = float(np.sum((response - mean) ** 2 - response)) <= 0.0
+    falls = _slope_at_poisson(response, mean, form) <= 0.0
     if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
         return poisson
-    inside = fit_indices(NegativeBinomialQuadratic(response), [design, np.ones((len(response), 1))], pairs)
+    linear = form is DispersionForm.LINEAR
+    likelihood = NegativeBinomialLinear(response) if linear else NegativeBinomialQuadratic(response)
+    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs)
     if not falls:
         return inside
     if not inside.convergence.converged:
         return poisson
-    size = np.exp(-inside.coefficients[1][0])
-    gain = negative_binomial_log_mass(response, _mean(inside, design), size) - poisson_log_mass(
-        response, mean
-    )
+    law = NegativeBinomialLaw(_mean(inside, design), float(np.exp(inside.coefficients[1][0])), form)
+    gain = law.log_density(response) - poisson_log_mass(response, mean)
     return inside if float(gain.sum()) > 0.0 else poisson
+
+
+def _slope_at_poisson(response: Floats, mean: Floats, form: DispersionForm) -> float:
+    """Slope of the log-likelihood in alpha at alpha = 0, times two; separated observations, of mean 0, add none."""
+    excess = (response - mean) ** 2 - response
+    if form is DispersionForm.LINEAR:
+        excess = np.divide(excess, mean, out=np.zeros_like(mean), where=mean > 0.0)
+    return float(np.sum(excess))
 
 
 def _mean(found: IndexFit, design: Floats) -> Floats:
@@ -74,14 +92,20 @@ def _mean(found: IndexFit, design: Floats) -> Floats:
 
 @dataclass(frozen=True)
 class NegativeBinomialModel:
-    """Counts with log-linear mean and variance mean + alpha mean^2, zeros included.
+    """Counts with log-linear mean and variance mean + alpha mean^2 or mean (1 + alpha), zeros included.
 
     Parameters
     ----------
     covariates : names of the covariates that enter the log of the mean beside a constant
+    form : 2 for variance mean + alpha mean^2, 1 for mean (1 + alpha)
+
+    Raises
+    ------
+    ModelError : the form is neither 1 nor 2
     """
 
     covariates: tuple[str, ...]
+    form: int = 2
 
     name: ClassVar[str] = "negative_binomial"
     family: ClassVar[Family] = Family.ECONOMETRIC
@@ -93,9 +117,13 @@ class NegativeBinomialModel:
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
         "Counts on every dyad, zeros included, are Poisson around a mean that itself varies (gamma) from dyad "
-        "to dyad, so the variance grows with the square of the mean."
+        "to dyad. In form 2, the default, the variance grows with the square of the mean; in form 1 it is a "
+        "multiple of the mean."
     )
-    formula: ClassVar[str] = "mean m, variance m + alpha m^2,  log m = constant + sum of slope x covariate"
+    formula: ClassVar[str] = (
+        "mean m, variance m + alpha m^2 (form 2) or m (1 + alpha) (form 1),  log m = constant + sum of slope x "
+        "covariate"
+    )
     parameters: ClassVar[str] = "maximum likelihood; covariates + 1, and alpha unless it is at its edge 0"
     caution: ClassVar[str] = (
         "Its estimates depend on the unit of the flows. One alpha serves both the zeros and the spread of the "
@@ -103,9 +131,17 @@ class NegativeBinomialModel:
     )
     sources: ClassVar[str] = "Cameron & Trivedi (1998); Bosquet & Boulhol (2014) on the unit"
 
+    def __post_init__(self) -> None:
+        if self.form not in _FORMS:
+            raise ModelError(
+                f"The form of a negative binomial must be 1, for variance m (1 + alpha), or 2, for m + alpha m^2; "
+                f"got {self.form!r}."
+            )
+
     def fit(self, dyads: Dyads, /) -> FittedNegativeBinomial:
         """Maximum likelihood on all of these dyads, zeros included."""
-        found = fit_negative_binomial(dyads.counts, dyads.design(self.covariates), node_pairs(dyads))
+        form, design = _FORMS[self.form], dyads.design(self.covariates)
+        found = fit_negative_binomial(dyads.counts, design, node_pairs(dyads), form)
         slopes = index_estimates(found, self.covariates, EstimatePart.JOINT)
         convergence = found.convergence
         if len(found.coefficients) == 1:
@@ -118,6 +154,7 @@ class NegativeBinomialModel:
         return FittedNegativeBinomial(
             index=LinearIndex.of(found, self.covariates),
             alpha=alpha.value,
+            form=form,
             estimates=slopes + Estimates((alpha,)),
             n_parameters=found.rank,
             convergence=convergence,
