@@ -201,7 +201,8 @@ class _Indices:
         return [m @ part for m, part in zip(self.matrices, self._split(point), strict=True)]
 
     def value(self, point: Floats) -> float:
-        with np.errstate(over="ignore", invalid="ignore"):
+        # A step may go too far, to where a mean overflows; the line search then takes a shorter one.
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
             return self.likelihood.value(self._indices(point))
 
     def movement(self, step: Floats) -> float:

@@ -23,6 +23,8 @@ __all__ = [
     "least_squares",
 ]
 
+_LOG_ALPHAS_NEARBY = tuple(float(a) for a in range(-30, 2))
+
 
 def least_squares(design: Floats, values: Floats, weights: Floats | None = None) -> Floats:
     """(k,) coefficients of a (weighted) least-squares fit; used for starts and for the lognormal."""
@@ -118,16 +120,24 @@ class GeometricExcess:
 
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
-    """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
+    """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all.
+
+    Parameters
+    ----------
+    response : (n,) counts
+    near : (n,) a first index from which to start, such as that of the Poisson where alpha is tiny
+    """
 
     response: Floats
+    near: Floats | None = None
 
     @property
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
     def restricted(self, keep: Bools, /) -> NegativeBinomialQuadratic:
-        return NegativeBinomialQuadratic(self.response[keep])
+        near = None if self.near is None else self.near[keep]
+        return NegativeBinomialQuadratic(self.response[keep], near)
 
     @cached_property
     def _distinct(self) -> tuple[Floats, Integers]:
@@ -136,7 +146,14 @@ class NegativeBinomialQuadratic:
         return values, inverse
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
-        """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply."""
+        """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply.
+
+        From an index given beside the counts, the likelihood itself says which dispersion suits it.
+        """
+        if self.near is not None:
+            near, ones = self.near, np.ones_like(self.near)
+            log_alpha = max(_LOG_ALPHAS_NEARBY, key=lambda a: self.value([near, a * ones]))
+            return np.append(least_squares(designs[0], near), log_alpha)
         logs = np.log(self.response + 0.5 * min(1.0, max(float(self.response.mean()), 1e-300)))
         coefficients = least_squares(designs[0], logs)
         index = designs[0] @ coefficients

@@ -64,7 +64,12 @@ def fit_negative_binomial(
         return poisson
     linear = form is DispersionForm.LINEAR
     likelihood = NegativeBinomialLinear(response) if linear else NegativeBinomialQuadratic(response)
-    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs)
+    designs = [design, np.ones((len(response), 1))]
+    inside = fit_indices(likelihood, designs, pairs)
+    if not inside.convergence.converged and not falls and not linear and poisson.convergence.converged:
+        # Large counts that are nearly Poisson have an alpha far below what the plain start looks at.
+        near = np.where(poisson.separated, 0.0, design @ poisson.coefficients[0])
+        inside = fit_indices(NegativeBinomialQuadratic(response, near), designs, pairs)
     if not falls:
         return inside
     if not inside.convergence.converged:
