@@ -187,6 +187,7 @@ class TruncatedNegativeBinomial:
         with np.errstate(over="ignore"):
             q = 1.0 / np.expm1(c)
         first = found.first - q * slope
-        # Written so that a vanishing q times a large slope stays finite.
-        second = found.second + (q * slope)[:, None] * slope[None, :] * (1.0 + q) - q * bend
+        # q (1 + q) times the outer product of the slopes, in two parts that neither overflow nor lose symmetry.
+        one, other = q * slope, np.sqrt(q) * slope
+        second = found.second + one[:, None] * one[None, :] + other[:, None] * other[None, :] - q * bend
         return IndexDerivatives(first, second)

@@ -1,4 +1,4 @@
-"""The five likelihoods: derivatives by differences, values against log masses, extreme arguments."""
+"""The likelihoods: derivatives by differences, values against log masses, extreme arguments."""
 
 from __future__ import annotations
 
@@ -9,6 +9,8 @@ import pytest
 from scipy import stats
 
 from steelyard.datasets import Floats
+from steelyard.models.binary_likelihoods import Probit
+from steelyard.models.gamma_likelihood import Gamma
 from steelyard.models.index_likelihood import IndexLikelihood
 from steelyard.models.likelihoods import (
     GeometricExcess,
@@ -18,7 +20,13 @@ from steelyard.models.likelihoods import (
     Poisson,
     least_squares,
 )
+from steelyard.models.negative_binomial_linear import NegativeBinomialLinear
 from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
+from steelyard.models.truncated_likelihoods import (
+    LogarithmicSeries,
+    TruncatedNegativeBinomial,
+    TruncatedPoisson,
+)
 
 N = 40
 RNG = np.random.default_rng(11)
@@ -30,6 +38,12 @@ LIKELIHOODS: dict[str, tuple[IndexLikelihood, int]] = {
     "geometric": (GeometricExcess(1.0 + RNG.poisson(3.0, N)), 1),
     "negative binomial": (NegativeBinomialQuadratic(RNG.negative_binomial(2, 0.3, N).astype(float)), 2),
     "lognormal": (LogNormal(RNG.lognormal(1.0, 1.5, N)), 2),
+    "probit": (Probit((RNG.random(N) < 0.4).astype(float)), 1),
+    "gamma": (Gamma(RNG.gamma(0.7, 3.0, N)), 2),
+    "linear negative binomial": (NegativeBinomialLinear(RNG.negative_binomial(2, 0.3, N).astype(float)), 2),
+    "truncated poisson": (TruncatedPoisson(1.0 + RNG.poisson(1.0, N)), 1),
+    "logarithmic series": (LogarithmicSeries(RNG.logseries(0.8, N).astype(float)), 1),
+    "truncated negative binomial": (TruncatedNegativeBinomial(1.0 + RNG.negative_binomial(1, 0.3, N)), 2),
 }
 
 
