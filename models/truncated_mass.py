@@ -14,8 +14,7 @@ from steelyard.models.special import (
 
 __all__ = ["log_series_log_mass", "log_series_mean_excess", "truncated_log_mass"]
 
-
-_SERIES_INDEX = -4.6
+_SERIES_INDEX = -4.6  # below, z / log(1 + z) - 1 is summed as a series in z
 _SMALL_INDEX = -37.0  # below, log(1 + exp(index)) is exp(index) to all digits
 
 

@@ -255,6 +255,20 @@ def test_linear_negative_binomial_against_statsmodels(air: Dyads) -> None:
     assert ours == pytest.approx(best.llf, rel=1e-6)
 
 
+@pytest.mark.parametrize("form", list(DispersionForm))
+@pytest.mark.parametrize("seed", range(4))
+def test_large_nearly_poisson_counts_are_certified(form: DispersionForm, seed: int) -> None:
+    """Poisson draws around means of up to 1e6: whichever side of it alpha falls, the fit is one, and not below it."""
+    design, index = made_up(400, 40 + seed)
+    law = PoissonLaw(np.exp(index + 8.0))
+    w = law.draw(np.random.default_rng(seed), 1)[0]
+    found = fit_negative_binomial(w, design, form=form)
+    assert found.convergence.converged, found.convergence.message
+    alpha = float(np.exp(found.coefficients[1][0])) if len(found.coefficients) == 2 else 0.0
+    fitted = NegativeBinomialLaw(np.exp(design @ found.coefficients[0]), alpha, form)
+    assert fitted.log_density(w).sum() >= law.log_density(w).sum()
+
+
 def test_linear_negative_binomial_edge() -> None:
     """Underdispersed counts: the Poisson fit, alpha at 0."""
     w = np.tile([1.0, 2.0, 1.0, 2.0], 15)
