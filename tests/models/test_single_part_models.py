@@ -256,9 +256,12 @@ def test_linear_negative_binomial_against_statsmodels(air: Dyads) -> None:
 
 
 @pytest.mark.parametrize("form", list(DispersionForm))
-@pytest.mark.parametrize("seed", range(4))
+@pytest.mark.parametrize("seed", [12, 17, 22, 26])
 def test_large_nearly_poisson_counts_are_certified(form: DispersionForm, seed: int) -> None:
-    """Poisson draws around means of up to 1e6: whichever side of it alpha falls, the fit is one, and not below it."""
+    """Poisson draws around means of up to 1e6: the fit is certified, and not below the truth.
+
+    With these seeds alpha is tiny but not 0, which a start from a log fit does not find.
+    """
     design, index = made_up(400, 40 + seed)
     law = PoissonLaw(np.exp(index + 8.0))
     w = law.draw(np.random.default_rng(seed), 1)[0]
