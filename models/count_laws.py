@@ -20,13 +20,13 @@ from steelyard.models.special import (
 )
 from steelyard.models.tails import negative_binomial_cdf, poisson_cdf
 
-__all__ = ["DispersionForm", "GeometricLinkLaw", "NegativeBinomialLaw", "PoissonLaw"]
+__all__ = ["DispersionForm", "GeometricLinkLaw", "NegativeBinomialLaw", "PoissonLaw", "draw_poisson"]
 
 _EXACT_POISSON_DRAWS_TO = 1e10
 _GAMMA_QUANTILE_TO = 1e4
 
 
-def _draw_poisson(rng: np.random.Generator, mean: Floats) -> Floats:
+def draw_poisson(rng: np.random.Generator, mean: Floats) -> Floats:
     """Poisson draws; above 1e10 a rounded normal with its skewness term, off by far less than one unit."""
     draws = rng.poisson(np.minimum(mean, _EXACT_POISSON_DRAWS_TO)).astype(np.float64)
     large = mean > _EXACT_POISSON_DRAWS_TO
@@ -100,7 +100,7 @@ class PoissonLaw:
 
     def draw(self, rng: np.random.Generator, size: int, /) -> Floats:
         """(size, n) counts."""
-        return _draw_poisson(rng, np.broadcast_to(self.mean, (size, len(self.mean))))
+        return draw_poisson(rng, np.broadcast_to(self.mean, (size, len(self.mean))))
 
 
 class DispersionForm(Enum):
@@ -206,7 +206,7 @@ class NegativeBinomialLaw:
         """(size, n) counts, as Poisson draws around gamma means."""
         shape = np.where(self.mean > 0.0, np.minimum(self.size, 1e100), 1.0)
         gamma = rng.standard_gamma(np.broadcast_to(shape, (size, len(shape))))
-        return _draw_poisson(rng, gamma * (self.mean / shape))
+        return draw_poisson(rng, gamma * (self.mean / shape))
 
 
 @dataclass(frozen=True, eq=False)

@@ -12,7 +12,7 @@ from steelyard.models.flow_distribution import AmountsDistribution, FlowDistribu
 from steelyard.models.gamma_law import GammaLinkLaw
 from steelyard.models.hurdle_law import HurdleLaw
 from steelyard.models.link_law import LinkLaw
-from steelyard.models.truncated_law import ZeroTruncatedLaw
+from steelyard.models.truncated_laws import LogarithmicSeriesLinkLaw, ZeroTruncatedLaw
 from steelyard.models.zero_inflated_law import ZeroInflatedLaw
 
 __all__ = [
@@ -24,6 +24,7 @@ __all__ = [
     "GeometricLinkLaw",
     "HurdleLaw",
     "LinkLaw",
+    "LogarithmicSeriesLinkLaw",
     "LognormalLinkLaw",
     "NegativeBinomialLaw",
     "PoissonLaw",

@@ -11,6 +11,7 @@ from scipy.special import digamma, expit, polygamma
 
 from steelyard.datasets.arrays import Bools, Floats, Integers
 from steelyard.models.index_protocol import Edges, IndexDerivatives, Rows
+from steelyard.models.size_derivatives import SERIES_FROM, nearly_poisson
 from steelyard.models.special import deviance_term, log_one_plus, negative_binomial_log_mass
 
 __all__ = [
@@ -22,7 +23,7 @@ __all__ = [
     "least_squares",
 ]
 
-SERIES_FROM = 100.0
+LOG_ALPHAS_NEARBY = tuple(float(a) for a in range(-30, 2))
 DIRECT_TO = 1000.0
 
 
@@ -129,20 +130,6 @@ class GeometricExcess:
         return _one_index((self.response - 1) * rest - y, -self.response * y * rest)
 
 
-def _nearly_poisson(w: Floats, mean: Floats, r: float) -> tuple[Floats, Floats]:
-    """First and second derivative of the log mass in a large size r, without differences of nearly equal terms.
-
-    The logarithms of the digamma series meet log(1 + mean / r) in log(1 + t) - t, t = (w - mean) / (r + mean).
-    """
-    both, total = w + r, mean + r
-    t = (w - mean) / total
-    gap = [(1 / r) ** k - (1 / both) ** k for k in range(8)]
-    first = w / (2 * r * both) - deviance_term(np.ones_like(t), both / total)
-    first += gap[2] / 12 - gap[4] / 120 + gap[6] / 252
-    tails = -(gap[2] / 2 + gap[3] / 6 - gap[5] / 30 + gap[7] / 42)
-    return first, t**2 / both + tails
-
-
 def _beside_mean(values: Floats, r: float) -> Floats:
     """(v,) the log mass less w log(mean / r) - (w + r) log(1 + mean / r), for distinct responses.
 
@@ -156,16 +143,24 @@ def _beside_mean(values: Floats, r: float) -> Floats:
 
 @dataclass(frozen=True, eq=False)
 class NegativeBinomialQuadratic:
-    """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all."""
+    """Counts with mean mu = exp(index 1) and variance mu + alpha mu^2, alpha = exp(index 2), equal for all.
+
+    Parameters
+    ----------
+    response : (n,) counts
+    near : (n,) a first index from which to start, such as that of the Poisson where alpha is tiny
+    """
 
     response: Floats
+    near: Floats | None = None
 
     @property
     def edges(self) -> Edges:
         return Edges(self.response == 0, np.zeros(len(self.response), dtype=bool))
 
     def restricted(self, keep: Rows, /) -> NegativeBinomialQuadratic:
-        return NegativeBinomialQuadratic(self.response[keep])
+        near = None if self.near is None else self.near[keep]
+        return NegativeBinomialQuadratic(self.response[keep], near)
 
     @cached_property
     def _distinct(self) -> tuple[Floats, Integers]:
@@ -174,7 +169,14 @@ class NegativeBinomialQuadratic:
         return values, inverse
 
     def start(self, designs: Sequence[Floats], /) -> Floats:
-        """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply."""
+        """A log fit of the smoothed counts, and the dispersion that its squared relative errors imply.
+
+        From an index given beside the counts, the likelihood itself says which dispersion suits it.
+        """
+        if self.near is not None:
+            near, ones = self.near, np.ones_like(self.near)
+            log_alpha = max(LOG_ALPHAS_NEARBY, key=lambda a: self.value([near, a * ones]))
+            return np.append(least_squares(designs[0], near), log_alpha)
         logs = np.log(self.response + 0.5 * min(1.0, max(float(self.response.mean()), 1e-300)))
         coefficients = least_squares(designs[0], logs)
         index = designs[0] @ coefficients
@@ -227,7 +229,7 @@ class NegativeBinomialQuadratic:
             by_size = psi[inverse] - r * log_one_plus(mean / r) - by_mean
             curvature = psi_1[inverse] + r * share + rest * by_mean
         else:
-            first, second = _nearly_poisson(w, mean, r)
+            first, second = nearly_poisson(w, mean, r)
             by_size, curvature = r * first, r**2 * second
         both = np.empty((2, 2, len(w)))
         both[0, 0] = -share * rest * (r + w)

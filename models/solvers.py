@@ -15,8 +15,8 @@ __all__ = ["Maximum", "Objective", "Slope", "newton_maximise"]
 
 RESIDUAL_LIMIT = 1e-8
 DECREMENT_LIMIT = 1e-10
-# The square of a distance in standard errors: a step of 1e-10 of them is not worth an evaluation.
-NEGLIGIBLE = 1e-20
+# The square of a distance in standard errors: a step of 1e-12 of them is not worth an evaluation.
+NEGLIGIBLE = 1e-24
 # Under separation each Newton step moves some linear index by about 1 for ever; at a true maximum the steps
 # shrink quadratically. So the size of the last step, in index units, tells the two apart.
 MOVEMENT_LIMIT = 1e-6

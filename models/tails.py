@@ -18,15 +18,14 @@ import numpy as np
 from scipy import special
 
 from steelyard.datasets.arrays import Floats
-from steelyard.models.special import deviance_term
+from steelyard.models.special import deviance_term, stirling_error
 
 __all__ = [
     "TEMME_COEFFICIENTS",
-    "gamma_upper",
+    "log_gamma_tails",
     "negative_binomial_cdf",
-    "negative_binomial_survival",
+    "negative_binomial_upper",
     "poisson_cdf",
-    "poisson_survival",
 ]
 
 #: Powers of eta (along a row) in the terms of order 1, 1/a and 1/a^2 of Temme's expansion.
@@ -54,7 +53,19 @@ TEMME_COEFFICIENTS: tuple[tuple[float, ...], ...] = (
 )
 
 _TEMME_FROM = 1e5
+_TEMME_ETA = 0.2
+_LEAST_PROBABILITY = 1e-280  # below, a probability may have underflowed and its logarithm is worked out apart
+_HALF_LOG_TWO_PI = 0.9189385332046727418
+_MOST_TERMS = 10_000
 _POISSON_FROM = 1e20  # sizes this many times the mean: the negative binomial is Poisson to all digits
+
+
+def _temme_series(a: Floats, eta: Floats) -> Floats:
+    """Sum of Temme's expansion in powers of 1 / a."""
+    series = np.zeros_like(eta)
+    for row in reversed(TEMME_COEFFICIENTS):
+        series = series / a + np.polynomial.polynomial.polyval(eta, row)
+    return series
 
 
 def _gamma_upper_large(a: Floats, x: Floats) -> Floats:
@@ -62,22 +73,10 @@ def _gamma_upper_large(a: Floats, x: Floats) -> Floats:
     squared = 2.0 * deviance_term(a, x)  # a eta^2
     z = np.copysign(np.sqrt(squared), x - a)
     # beyond |eta| = 0.2 the correction is below 1e-800, so the polynomials need not hold there
-    eta = np.clip(z / np.sqrt(a), -0.2, 0.2)
-    series = np.zeros_like(eta)
-    for row in reversed(TEMME_COEFFICIENTS):
-        series = series / a + np.polynomial.polynomial.polyval(eta, row)
+    series = _temme_series(a, np.clip(z / np.sqrt(a), -_TEMME_ETA, _TEMME_ETA))
     with np.errstate(under="ignore"):
         upper: Floats = special.ndtr(-z) + np.exp(-0.5 * squared) / np.sqrt(2.0 * np.pi * a) * series
     return np.clip(upper, 0.0, 1.0)
-
-
-def gamma_upper(a: Floats, x: Floats, /) -> Floats:
-    """Regularised upper incomplete gamma function Q(a, x) for a > 0, x >= 0, arrays of one shape."""
-    upper: Floats = special.gammaincc(np.minimum(a, _TEMME_FROM), x)
-    large = a > _TEMME_FROM
-    if large.any():
-        upper[large] = _gamma_upper_large(a[large], x[large])
-    return upper
 
 
 def poisson_cdf(weights: Floats, mean: Floats, /) -> Floats:
@@ -94,32 +93,12 @@ def poisson_cdf(weights: Floats, mean: Floats, /) -> Floats:
     """
     floor, mean = np.broadcast_arrays(np.floor(np.asarray(weights, dtype=np.float64)), mean)
     inside = (floor >= 0.0) & np.isfinite(floor)
-    probability = gamma_upper(np.where(inside, floor, 0.0) + 1.0, mean)
+    a = np.where(inside, floor, 0.0) + 1.0
+    probability: Floats = special.gammaincc(np.minimum(a, _TEMME_FROM), mean)
+    large = a > _TEMME_FROM
+    if large.any():
+        probability[large] = _gamma_upper_large(a[large], mean[large])
     return np.where(inside, probability, np.where(floor > 0.0, 1.0, 0.0))
-
-
-def _beta_tails(w: Floats, m: Floats, r: Floats, *, upper: bool) -> Floats:
-    """P(W <= w), or P(W > w), as incomplete beta functions of the smaller of the two shares of m + r.
-
-    The small share carries its digits, one minus the other does not.
-    """
-    of_mean, of_size = (special.betainc, special.betaincc) if upper else (special.betaincc, special.betainc)
-    tail = np.empty_like(w)
-    low = m < r
-    tail[low] = of_mean(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
-    low = ~low
-    tail[low] = of_size(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
-    return tail
-
-
-def poisson_survival(weights: Floats, mean: Floats, /) -> Floats:
-    """Probability of more than `weights` >= 0 under Poisson laws with means up to 1e5, digits kept where small."""
-    return np.asarray(special.gammainc(np.floor(weights) + 1.0, mean))
-
-
-def negative_binomial_survival(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
-    """Probability of more than `weights` >= 0, digits kept where it is small; arrays of one shape, size finite."""
-    return _beta_tails(np.floor(weights), mean, size, upper=True)
 
 
 def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
@@ -139,10 +118,137 @@ def negative_binomial_cdf(weights: Floats, mean: Floats, size: Floats, /) -> Flo
     mixed = (mean > 0.0) & (size < _POISSON_FROM * np.maximum(mean, 1.0))
     floor = np.floor(weights)
     inside = (floor >= 0.0) & np.isfinite(floor)
-    probability = np.where(floor >= 0.0, 1.0, 0.0)
+    probability = np.where(inside, 1.0, np.where(floor > 0.0, 1.0, 0.0))
     few = mixed & inside
-    probability[few] = _beta_tails(floor[few], mean[few], size[few], upper=False)
+    w, m, r = floor[few], mean[few], size[few]
+    # the small one of the two shares carries its digits, one minus the other does not
+    mixture = np.empty_like(w)
+    low = m < r
+    mixture[low] = special.betaincc(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
+    low = ~low
+    mixture[low] = special.betainc(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
+    probability[few] = mixture
     rest = ~mixed
     if rest.any():
         probability[rest] = poisson_cdf(weights[rest], mean[rest])
     return probability
+
+
+def negative_binomial_upper(weights: Floats, mean: Floats, size: Floats, /) -> Floats:
+    """Probability of more than `weights`, to full relative precision where it is small.
+
+    Parameters
+    ----------
+    weights : (..., n) array of whole numbers >= 0, or infinity
+    mean : (n,) array, finite, > 0
+    size : (n,) array, > 0; infinity gives the Poisson law
+
+    Returns
+    -------
+    array of the joint shape, within [0, 1].
+    """
+    weights, mean, size = np.broadcast_arrays(np.asarray(weights, dtype=np.float64), mean, size)
+    upper = np.zeros(weights.shape)
+    inside = (weights >= 0.0) & (weights < np.inf)
+    mixed = inside & (size < _POISSON_FROM * np.maximum(mean, 1.0))
+    w, m, r = weights[mixed], mean[mixed], size[mixed]
+    low = m < r
+    probability = np.empty_like(w)
+    probability[low] = special.betainc(w[low] + 1.0, r[low], m[low] / (m[low] + r[low]))
+    low = ~low
+    probability[low] = special.betaincc(r[low], w[low] + 1.0, r[low] / (m[low] + r[low]))
+    upper[mixed] = probability
+    rest = inside & ~mixed
+    upper[rest] = special.gammainc(weights[rest] + 1.0, mean[rest])
+    return upper
+
+
+def log_gamma_tails(shape: Floats, ratio: Floats, /) -> tuple[Floats, Floats]:
+    """Logarithms of both tails of a gamma law, each to full relative precision however small it is.
+
+    Parameters
+    ----------
+    shape : (n,) array, finite, > 0
+    ratio : (n,) array >= 0, a weight divided by the mean of its law; may be infinite
+
+    Returns
+    -------
+    (n,) arrays: log P(weight <= ratio x mean) and log P(weight > ratio x mean).
+    """
+    shape, ratio = np.broadcast_arrays(shape, np.asarray(ratio, dtype=np.float64))
+    lower, upper = np.full(shape.shape, -np.inf), np.zeros(shape.shape)
+    lower[ratio == np.inf], upper[ratio == np.inf] = 0.0, -np.inf
+    inside = (ratio > 0.0) & (ratio < np.inf)
+    a, r = shape[inside], ratio[inside]
+    large = (a > _TEMME_FROM) & (2.0 * _shortfall(r) < _TEMME_ETA**2)
+    low, high = np.empty_like(a), np.empty_like(a)
+    low[large], high[large] = _log_tails_large(a[large], r[large])
+    low[~large], high[~large] = _log_tails_plain(a[~large], r[~large])
+    lower[inside], upper[inside] = low, high
+    return lower, upper
+
+
+def _log_tails_large(a: Floats, ratio: Floats) -> tuple[Floats, Floats]:
+    """Both log tails by Temme's expansion, the correction taken relative to the normal tail."""
+    z = np.copysign(np.sqrt(2.0 * a * _shortfall(ratio)), ratio - 1.0)
+    share = _temme_series(a, z / np.sqrt(a)) / np.sqrt(a)
+    log_density = -0.5 * z * z - _HALF_LOG_TWO_PI
+    lower, upper = special.log_ndtr(z), special.log_ndtr(-z)
+    with np.errstate(over="ignore", invalid="ignore", under="ignore"):
+        below = np.log1p(-share * np.exp(np.minimum(log_density - lower, 700.0)))
+        above = np.log1p(share * np.exp(np.minimum(log_density - upper, 700.0)))
+    return lower + below, upper + above
+
+
+def _shortfall(ratio: Floats) -> Floats:
+    """ratio - 1 - log(ratio)."""
+    return deviance_term(np.ones_like(ratio), ratio)
+
+
+def _log_tails_plain(a: Floats, ratio: Floats) -> tuple[Floats, Floats]:
+    """Both log tails by the incomplete gamma functions, or by series where those underflow."""
+    with np.errstate(over="ignore", under="ignore"):
+        x = a * ratio
+        below, above = special.gammainc(a, x), special.gammaincc(a, x)
+    tails: list[Floats] = []
+    for tail, other, small in ((below, above, _log_lower_series), (above, below, _log_upper_fraction)):
+        with np.errstate(divide="ignore"):
+            log_tail = np.where(other < 0.5, np.log1p(-other), np.log(tail))
+        few = tail < _LEAST_PROBABILITY
+        log_tail[few] = small(a[few], ratio[few])
+        tails.append(log_tail)
+    return tails[0], tails[1]
+
+
+def _log_kernel(a: Floats, ratio: Floats) -> Floats:
+    """log of x^a exp(-x) / Gamma(a + 1) with x = a ratio: a deviance and a Stirling error, no large terms."""
+    return -a * _shortfall(ratio) - 0.5 * np.log(a) - _HALF_LOG_TWO_PI - stirling_error(a)
+
+
+def _log_lower_series(a: Floats, ratio: Floats) -> Floats:
+    """log P(a, x) for x well below a: kernel times 1 + x / (a + 1) + x^2 / ((a + 1) (a + 2)) + ..."""
+    x = a * ratio
+    total, term = np.ones_like(x), np.ones_like(x)
+    for k in range(1, _MOST_TERMS):
+        term = term * x / (a + k)
+        total += term
+        if (term <= 1e-17 * total).all():
+            break
+    return _log_kernel(a, ratio) + np.log(total)
+
+
+def _log_upper_fraction(a: Floats, ratio: Floats) -> Floats:
+    """log Q(a, x) for x well above a: kernel times a over Legendre's continued fraction, by Lentz's method."""
+    x = np.minimum(a * ratio, 1e300)
+    b = x + 1.0 - a
+    c, d = np.full_like(x, 1e300), 1.0 / b
+    total = d.copy()
+    for k in range(1, _MOST_TERMS):
+        step = -k * (k - a)
+        b = b + 2.0
+        d = 1.0 / (step * d + b)
+        c = b + step / c
+        total *= c * d
+        if (np.abs(c * d - 1.0) <= 1e-16).all():
+            break
+    return _log_kernel(a, ratio) + np.log(a) + np.log(total)

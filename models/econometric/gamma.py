@@ -1,4 +1,4 @@
-"""Gamma regression of observed flows, as a law of the weight given a link."""
+"""Gamma regression of observed flows with a log-linear mean, as a law of the weight given a link."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ from steelyard.models.contract import Convergence, Family, Holdout, Information,
 from steelyard.models.distributions import GammaLinkLaw
 from steelyard.models.errors import ModelError
 from steelyard.models.estimates import EstimatePart, Estimates
-from steelyard.models.gamma_likelihood import GammaAmounts
+from steelyard.models.gamma_likelihood import Gamma
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.likelihoods import least_squares
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
@@ -42,7 +42,7 @@ class FittedGamma:
 
 @dataclass(frozen=True)
 class GammaModel:
-    """Gamma amounts on observed links with log-linear mean and one shape.
+    """Gamma amounts on observed links, with a log-linear mean and one dispersion.
 
     Parameters
     ----------
@@ -60,20 +60,21 @@ class GammaModel:
     information: ClassVar[Information] = Information.COVARIATES
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
-        "The weight of a link is gamma with a log-linear mean, and its standard deviation is the same share of "
-        "the mean everywhere. Zeros are dropped, so it says how heavy a link is."
+        "Positive flows are gamma with a log-linear mean and a variance that grows with its square. Zeros are "
+        "dropped, so it says how heavy a link is and nothing of which links exist. It enters as a density of w."
     )
     formula: ClassVar[str] = (
-        "density w^(k-1) exp(-k w / m) (k / m)^k / Gamma(k),  k = 1 / alpha,  log m = constant + sum of slope x "
-        "covariate;  variance alpha m^2"
+        "w ~ gamma with mean m and variance alpha m^2 (shape 1 / alpha), log m = constant + sum of slope x "
+        "covariate, given a link"
     )
-    parameters: ClassVar[str] = "maximum likelihood, the shape with the slopes; covariates + 2, alpha counted"
+    parameters: ClassVar[str] = "maximum likelihood, slopes and alpha together; covariates + 2, alpha counted"
     caution: ClassVar[str] = (
-        "It speaks of positive flows only, and gives the small ones much weight: each counts by its ratio to the "
-        "mean. Slopes are consistent whenever the mean is right; the density is not."
+        "The slopes are consistent whenever the mean is right, but every flow has the same relative weight in "
+        "them, so small and poorly measured flows count as much as large ones. With alpha above 1 the density is "
+        "infinite at zero, and flows rounded to small units then look more likely than they are."
     )
     sources: ClassVar[str] = (
-        "McCullagh & Nelder (1989); Santos Silva & Tenreyro (2006); Manning & Mullahy (2001)"
+        "McCullagh & Nelder (1989); Manning & Mullahy (2001); Santos Silva & Tenreyro (2006)"
     )
 
     def fit(self, dyads: Dyads, /) -> FittedGamma:
@@ -84,16 +85,15 @@ class GammaModel:
         ModelError : too few links, or the covariates explain every flow exactly
         """
         linked = observed_links(dyads)
-        design, logs = linked.design(self.covariates), np.log(linked.weights)
+        design = linked.design(self.covariates)
+        logs = np.log(linked.weights)
         residual = logs - design @ least_squares(design, logs)
         if float(np.abs(residual).max()) <= 1e-9 * max(1.0, float(np.abs(logs).max())):
             raise ModelError(
                 f"the covariates explain all {len(logs)} positive flows exactly, so alpha is 0 and the gamma law "
                 "has no density; use fewer covariates"
             )
-        found = fit_indices(
-            GammaAmounts(linked.weights), [design, np.ones((len(logs), 1))], node_pairs(linked)
-        )
+        found = fit_indices(Gamma(linked.weights), [design, np.ones((len(logs), 1))], node_pairs(linked))
         alpha = scale_estimate(found, 1, "alpha", EstimatePart.DISPERSION)
         return FittedGamma(
             index=LinearIndex.of(found, self.covariates),

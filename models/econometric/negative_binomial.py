@@ -17,7 +17,6 @@ from steelyard.models.errors import ModelError
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import NegativeBinomialQuadratic, Poisson
-from steelyard.models.linear_dispersion import NegativeBinomialLinear
 from steelyard.models.linear_index import (
     LinearIndex,
     alpha_estimate,
@@ -26,6 +25,7 @@ from steelyard.models.linear_index import (
     with_alpha_at_its_edge,
 )
 from steelyard.models.measure import Measure
+from steelyard.models.negative_binomial_linear import NegativeBinomialLinear
 from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
@@ -81,6 +81,10 @@ def fit_negative_binomial(
         return fit_indices(Poisson(response), [design], pairs, errors=errors)
     if inside is None:
         inside = _inside(response, design, pairs, form, errors=errors)
+    if not inside.convergence.converged and not falls and poisson.convergence.converged:
+        # Large counts that are nearly Poisson have an alpha far below what the plain start looks at.
+        near = np.where(poisson.separated, 0.0, design @ poisson.coefficients[0])
+        inside = _inside(response, design, pairs, form, near, errors=errors)
     if not falls:
         return inside
     if inside.convergence.converged and inside.rank:
@@ -93,17 +97,24 @@ def fit_negative_binomial(
 
 
 def _inside(
-    response: Floats, design: Floats, pairs: NodePairs | None, form: DispersionForm, *, errors: bool
+    response: Floats,
+    design: Floats,
+    pairs: NodePairs | None,
+    form: DispersionForm,
+    near: Floats | None = None,
+    *,
+    errors: bool,
 ) -> IndexFit:
-    """The fit with a dispersion above 0."""
-    return fit_indices(
-        _likelihood(response, form), [design, np.ones((len(response), 1))], pairs, errors=errors
-    )
+    """The fit with a dispersion above 0; `near` is a first index to start from."""
+    designs = [design, np.ones((len(response), 1))]
+    return fit_indices(_likelihood(response, form, near), designs, pairs, errors=errors)
 
 
-def _likelihood(response: Floats, form: DispersionForm) -> NegativeBinomialQuadratic | NegativeBinomialLinear:
+def _likelihood(
+    response: Floats, form: DispersionForm, near: Floats | None = None
+) -> NegativeBinomialQuadratic | NegativeBinomialLinear:
     if form is DispersionForm.QUADRATIC:
-        return NegativeBinomialQuadratic(response)
+        return NegativeBinomialQuadratic(response, near)
     return NegativeBinomialLinear(response)
 
 
@@ -129,9 +140,9 @@ def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, for
         return False
     bound = float(moved @ np.log(moved) - moved.sum() - gammaln(response + 1.0).sum())
     reached = _likelihood(response, form).value([index, np.full_like(index, found.coefficients[1][0])])
-    rounding = 1e-12 * float(response @ np.abs(np.log(np.maximum(response, 1.0)))) + 1e-9 * abs(reached)
+    rounding = 1e-10 * float(response @ (1.0 + np.log(np.maximum(response, 1.0)))) + 1e-9 * abs(reached)
     off = float(np.abs(columns.T @ (response - moved) / scale).max()) / max(1.0, float(response.sum()))
-    return off < 1e-9 and bound + 1.0 + rounding < reached
+    return off < 1e-12 and bound + 1.0 + rounding < reached
 
 
 def _slope_at_zero(response: Floats, mean: Floats, *, quadratic: bool) -> float:

@@ -8,13 +8,13 @@ from typing import ClassVar
 from scipy.special import log_ndtr
 
 from steelyard.datasets import Dyads, Floats
+from steelyard.models.binary_likelihoods import Probit
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
 from steelyard.models.distributions import LinkLaw
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs
 from steelyard.models.measure import Measure
-from steelyard.models.probit_likelihood import Probit
 
 __all__ = ["FittedProbit", "ProbitModel"]
 
@@ -34,12 +34,13 @@ class FittedProbit:
 
     def distribution(self, dyads: Dyads, /) -> LinkLaw:
         index = self.index.on(dyads)
+        # Both logarithms keep their digits, where 1 - p itself would round to 0 at an index of 9.
         return LinkLaw.from_log_odds(log_ndtr(index) - log_ndtr(-index))
 
 
 @dataclass(frozen=True)
 class ProbitModel:
-    """Links whose probability is the normal distribution function of a linear index.
+    """Links with probability Phi(index), Phi the standard normal distribution function.
 
     Parameters
     ----------
@@ -57,15 +58,14 @@ class ProbitModel:
     information: ClassVar[Information] = Information.COVARIATES
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
-        "A link is there when a normal variable with mean equal to the linear index is positive; links are "
-        "independent given the covariates."
+        "A link is there when a linear index plus a standard normal error is above zero; the errors of two "
+        "dyads are independent."
     )
-    formula: ClassVar[str] = "p = Phi(constant + sum of slope x covariate)"
+    formula: ClassVar[str] = "p = Phi(constant + sum of slope x covariate), Phi the standard normal law"
     parameters: ClassVar[str] = "maximum likelihood; covariates + 1, fewer where the data are separated"
     caution: ClassVar[str] = (
-        "Its slopes are in standard deviations of the hidden variable and are not those of a logit. Its tails "
-        "are thinner, so a surprising link costs it more. Like the logit it knows nothing of a node but its "
-        "covariates."
+        "Its slopes are in standard deviations of the error, about 0.6 of those of a logit, and its tails are "
+        "thinner: one link against the odds weighs more. It knows nothing of a node but its covariates."
     )
     sources: ClassVar[str] = "McCullagh & Nelder (1989); Correia, Guimaraes & Zylkin (2019) on separation"
 

@@ -1,43 +1,36 @@
-"""Zero-truncated negative-binomial regression, as a law of the weight given a link."""
+"""Zero-truncated negative-binomial regression of observed links' counts, quadratic variance (form 2)."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import inf
 from typing import ClassVar
 
 import numpy as np
 
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
-from steelyard.models.covariance import NodePairs
-from steelyard.models.distributions import ZeroTruncatedLaw
-from steelyard.models.errors import ModelError
-from steelyard.models.estimates import EstimatePart, Estimates
-from steelyard.models.index_likelihood import IndexFit, fit_indices
-from steelyard.models.linear_index import (
-    LinearIndex,
-    alpha_estimate,
-    index_estimates,
-    node_pairs,
-    with_alpha_at_its_edge,
+from steelyard.models.distributions import (
+    DispersionForm,
+    LogarithmicSeriesLinkLaw,
+    NegativeBinomialLaw,
+    ZeroTruncatedLaw,
 )
+from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
+from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
 from steelyard.models.measure import Measure
 from steelyard.models.observed_links import observed_links
-from steelyard.models.truncated_likelihoods import TruncatedNegativeBinomial, TruncatedPoisson
+from steelyard.models.truncated_fit import TruncatedFit, TruncatedForm, fit_truncated_negative_binomial
 
-__all__ = [
-    "FittedTruncatedNegativeBinomial",
-    "TruncatedNegativeBinomialModel",
-    "fit_truncated_negative_binomial",
-]
-
-# An alpha this large has no finite maximum behind it: the law is the logarithmic series to all digits that matter.
-LIMIT_FROM = 1e6
+__all__ = ["FittedTruncatedNegativeBinomial", "TruncatedNegativeBinomialModel"]
 
 
 @dataclass(frozen=True)
 class FittedTruncatedNegativeBinomial:
-    """Weight given a link: negative binomial around exp(index), given that it is not zero."""
+    """Weight given a link: negative binomial with mean exp(index), given that it is not zero.
+
+    At infinite alpha the index is the log of alpha times the mean, and the law is a logarithmic series.
+    """
 
     index: LinearIndex
     alpha: float
@@ -49,75 +42,16 @@ class FittedTruncatedNegativeBinomial:
     def expected_weight(self, dyads: Dyads, /) -> Floats:
         return self.distribution(dyads).mean
 
-    def distribution(self, dyads: Dyads, /) -> ZeroTruncatedLaw:
-        return ZeroTruncatedLaw.of(np.exp(self.index.on(dyads)), self.alpha)
-
-
-def fit_truncated_negative_binomial(
-    response: Floats, design: Floats, pairs: NodePairs | None = None
-) -> IndexFit:
-    """Fit plain arrays of counts >= 1; the second index is the constant log alpha.
-
-    Where the likelihood is highest at alpha = 0 the truncated Poisson fit comes back, with one index. As for the
-    untruncated law, the slope at alpha = 0 alone does not say so, and both maxima are compared.
-
-    Raises
-    ------
-    ModelError : too few counts; or the likelihood rises without end as alpha grows and the untruncated mean falls,
-        towards the law of the logarithmic series
-    """
-    poisson = fit_indices(TruncatedPoisson(response), [design], errors=False)
-    falls = _slope_at_zero(poisson, response, design) <= 0.0
-    if falls and len(response) - int(poisson.separated.sum()) <= poisson.rank + 1:
-        return fit_indices(TruncatedPoisson(response), [design], pairs)
-    likelihood = TruncatedNegativeBinomial(response)
-    inside = fit_indices(likelihood, [design, np.ones((len(response), 1))], pairs)
-    alpha = float(np.exp(min(float(inside.coefficients[1][0]), 700.0))) if inside.rank else 1.0
-    if not inside.convergence.converged and alpha > LIMIT_FROM and not falls:
-        raise ModelError(
-            f"the likelihood rises without end as alpha grows (it reached {alpha:.0e}) and the untruncated mean "
-            "falls: the counts are at least as uneven as the logarithmic series allows, and no maximum exists; use "
-            "geometric, lognormal or gamma weights"
-        )
-    if falls and (
-        not inside.convergence.converged
-        or _log_likelihood(likelihood, inside, design) <= _poisson_log_likelihood(poisson, response, design)
-    ):
-        return fit_indices(TruncatedPoisson(response), [design], pairs)
-    return inside
-
-
-def _index(found: IndexFit, design: Floats) -> Floats:
-    """(n,) index, so low on separated observations that they are certain."""
-    index = np.full(len(design), -700.0)
-    index[~found.separated] = design[~found.separated] @ found.coefficients[0]
-    return index
-
-
-def _slope_at_zero(found: IndexFit, response: Floats, design: Floats) -> float:
-    """Slope of the log-likelihood in alpha at alpha = 0, times two."""
-    kept = ~found.separated
-    mean = np.exp(_index(found, design)[kept])
-    with np.errstate(over="ignore"):
-        hidden = mean**2 / np.expm1(mean)
-    return float(np.sum((response[kept] - mean) ** 2 - response[kept] + hidden))
-
-
-def _log_likelihood(likelihood: TruncatedNegativeBinomial, found: IndexFit, design: Floats) -> float:
-    some = likelihood.restricted(~found.separated)
-    log_alpha = np.full(len(some.response), found.coefficients[1][0])
-    return some.log_mass(_index(found, design)[~found.separated], log_alpha)
-
-
-def _poisson_log_likelihood(found: IndexFit, response: Floats, design: Floats) -> float:
-    kept = ~found.separated
-    law = ZeroTruncatedLaw.of(np.exp(_index(found, design)[kept]), 0.0)
-    return float(law.log_density(response[kept]).sum())
+    def distribution(self, dyads: Dyads, /) -> ZeroTruncatedLaw | LogarithmicSeriesLinkLaw:
+        index = self.index.on(dyads)
+        if self.alpha == inf:
+            return LogarithmicSeriesLinkLaw(index)
+        return ZeroTruncatedLaw(NegativeBinomialLaw(np.exp(index), self.alpha, DispersionForm.QUADRATIC))
 
 
 @dataclass(frozen=True)
 class TruncatedNegativeBinomialModel:
-    """Counts on observed links: negative binomial but for the zeros, which are another part's business.
+    """Counts on observed links, negative binomial given that they are not zero.
 
     Parameters
     ----------
@@ -135,33 +69,66 @@ class TruncatedNegativeBinomialModel:
     information: ClassVar[Information] = Information.COVARIATES
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
-        "The count of a link is negative binomial given that it is not zero; with a law of links in front it is "
-        "the negative-binomial hurdle."
+        "Counts of observed links are negative binomial with a log-linear mean, given that they are not zero. It "
+        "says how heavy a link is and nothing of which links exist; with a law of links it makes a hurdle model."
     )
     formula: ClassVar[str] = (
-        "P(w | link) = f(w) / (1 - f(0)),  f negative binomial with mean m and variance m + alpha m^2,  log m = "
-        "constant + sum of slope x covariate"
+        "P(w) = N(w) / (1 - N(0)) for w >= 1, N negative binomial with mean m and variance m + alpha m^2, log m = "
+        "constant + sum of slope x covariate, given a link"
     )
     parameters: ClassVar[str] = (
-        "maximum likelihood on the observed links; covariates + 1, and alpha unless it is at its edge 0"
+        "maximum likelihood; covariates + 1, and alpha unless it is at an edge: 0 (truncated Poisson) or infinity "
+        "(logarithmic series, its index the log of alpha m)"
     )
     caution: ClassVar[str] = (
-        "Slopes are those of the untruncated mean, of which no zero is seen: with heavy-tailed flows alpha is large, "
-        "most of f lies on the unseen zero, and alpha and the constant are told apart only weakly. Where the "
-        "likelihood rises towards the logarithmic series it has no maximum, and the fit is refused."
+        "m is the mean before truncation, an extrapolation to zeros that the law has not seen: where alpha is "
+        "large, m and alpha are hardly told apart, and only the expected weight m / (1 - N(0)) is to be read. "
+        "Its estimates depend on the unit of the flows."
     )
-    sources: ClassVar[str] = "Cragg (1971); Mullahy (1986); Cameron & Trivedi (1998)"
+    sources: ClassVar[str] = "Cragg (1971); Mullahy (1986)"
 
     def fit(self, dyads: Dyads, /) -> FittedTruncatedNegativeBinomial:
-        """Maximum likelihood on the observed links among these dyads."""
+        """Maximum likelihood on the observed links among these dyads, both edges of alpha included.
+
+        Raises
+        ------
+        ModelError : too few links
+        """
         linked = observed_links(dyads)
         design = linked.design(self.covariates)
-        found = fit_truncated_negative_binomial(linked.counts, design, node_pairs(linked))
-        alpha = alpha_estimate(found, "the maximum is the truncated Poisson law")
+        fitted = fit_truncated_negative_binomial(linked.counts, design, node_pairs(linked))
+        found = fitted.found
+        alpha = _alpha(fitted)
+        convergence = found.convergence
+        if alpha.status is Status.BOUNDARY:
+            edge = "0" if alpha.value == 0.0 else "infinity"
+            said = "; ".join(m for m in (convergence.message, f"alpha at its edge {edge}") if m)
+            convergence = replace(convergence, message=said)
         return FittedTruncatedNegativeBinomial(
             index=LinearIndex.of(found, self.covariates),
             alpha=alpha.value,
-            estimates=index_estimates(found, self.covariates, EstimatePart.WEIGHTS) + Estimates((alpha,)),
+            estimates=_index_rows(fitted, self.covariates) + Estimates((alpha,)),
             n_parameters=found.rank,
-            convergence=with_alpha_at_its_edge(found),
+            convergence=convergence,
         )
+
+
+def _alpha(fitted: TruncatedFit) -> Estimate:
+    """The row of alpha."""
+    if fitted.form is TruncatedForm.INSIDE:
+        return scale_estimate(fitted.found, 1, "alpha", EstimatePart.DISPERSION)
+    if fitted.form is TruncatedForm.POISSON:
+        value, note = 0.0, "no overdispersion: the maximum is the truncated Poisson law"
+    else:
+        value, note = inf, "the likelihood rises in alpha without end: the maximum is the logarithmic series"
+    return Estimate(EstimatePart.DISPERSION, "alpha", value, {}, Status.BOUNDARY, True, note)
+
+
+def _index_rows(fitted: TruncatedFit, covariates: tuple[str, ...]) -> Estimates:
+    """The rows of the index, the constant saying what it is the constant of at infinite alpha."""
+    rows = index_estimates(fitted.found, covariates, EstimatePart.WEIGHTS).rows
+    if fitted.form is TruncatedForm.LOGARITHMIC:
+        said = "of the log of alpha times the mean before truncation"
+        note = "; ".join(n for n in (rows[0].note, said) if n)
+        rows = (replace(rows[0], note=note), *rows[1:])
+    return Estimates(rows)

@@ -1,4 +1,4 @@
-"""Zero-truncated Poisson regression, as a law of the weight given a link."""
+"""Zero-truncated Poisson regression of observed links' counts."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ import numpy as np
 
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
-from steelyard.models.distributions import ZeroTruncatedLaw
+from steelyard.models.distributions import PoissonLaw, ZeroTruncatedLaw
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import fit_indices
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs
@@ -22,7 +22,7 @@ __all__ = ["FittedTruncatedPoisson", "TruncatedPoissonModel"]
 
 @dataclass(frozen=True)
 class FittedTruncatedPoisson:
-    """Weight given a link: Poisson around exp(index), given that it is not zero."""
+    """Weight given a link: Poisson with mean exp(index), given that it is not zero."""
 
     index: LinearIndex
     estimates: Estimates
@@ -34,12 +34,12 @@ class FittedTruncatedPoisson:
         return self.distribution(dyads).mean
 
     def distribution(self, dyads: Dyads, /) -> ZeroTruncatedLaw:
-        return ZeroTruncatedLaw.of(np.exp(self.index.on(dyads)), 0.0)
+        return ZeroTruncatedLaw(PoissonLaw(np.exp(self.index.on(dyads))))
 
 
 @dataclass(frozen=True)
 class TruncatedPoissonModel:
-    """Counts on observed links: Poisson but for the zeros, which are another part's business.
+    """Counts on observed links, Poisson given that they are not zero.
 
     Parameters
     ----------
@@ -57,25 +57,31 @@ class TruncatedPoissonModel:
     information: ClassVar[Information] = Information.COVARIATES
     requires: ClassVar[Requirements] = Requirements(Need.REQUIRED)
     summary: ClassVar[str] = (
-        "The count of a link is Poisson given that it is not zero; with a law of links in front it is the Poisson "
-        "hurdle."
+        "Counts of observed links are Poisson with a log-linear mean, given that they are not zero. It says how "
+        "heavy a link is and nothing of which links exist; with a law of links it makes a hurdle model."
     )
     formula: ClassVar[str] = (
-        "P(w | link) = exp(-m) m^w / (w! (1 - exp(-m))),  log m = constant + sum of slope x covariate"
+        "P(w) = m^w / (w! (exp(m) - 1)) for w >= 1, log m = constant + sum of slope x covariate, given a link"
     )
-    parameters: ClassVar[str] = "maximum likelihood on the observed links; covariates + 1"
+    parameters: ClassVar[str] = (
+        "maximum likelihood; covariates + 1, fewer where links of weight 1 separate the data"
+    )
     caution: ClassVar[str] = (
-        "Slopes are those of the untruncated mean m; the expected weight of a link is m / (1 - exp(-m)). Flows "
-        "vary far more than Poisson counts, and unlike Poisson on all dyads its slopes then have no other excuse: "
-        "they are consistent only if the law is right."
+        "m is the mean before truncation; the expected weight of a link is m / (1 - exp(-m)). Unlike the Poisson "
+        "on all dyads, its slopes are wrong when the law is, and flows vary far more than Poisson counts."
     )
     sources: ClassVar[str] = "Cragg (1971); Mullahy (1986)"
 
     def fit(self, dyads: Dyads, /) -> FittedTruncatedPoisson:
-        """Maximum likelihood on the observed links among these dyads."""
+        """Maximum likelihood on the observed links among these dyads.
+
+        Raises
+        ------
+        ModelError : too few links
+        """
         linked = observed_links(dyads)
-        design = linked.design(self.covariates)
-        found = fit_indices(TruncatedPoisson(linked.counts), [design], node_pairs(linked))
+        likelihood = TruncatedPoisson(linked.counts)
+        found = fit_indices(likelihood, [linked.design(self.covariates)], node_pairs(linked))
         return FittedTruncatedPoisson(
             index=LinearIndex.of(found, self.covariates),
             estimates=index_estimates(found, self.covariates, EstimatePart.WEIGHTS),

@@ -17,6 +17,7 @@ from steelyard.datasets import (
     Transform,
 )
 from steelyard.models import Family, Information, TwoPart
+from steelyard.models.econometric.negative_binomial import NegativeBinomialModel
 
 HEAD = """
 title = "t"
@@ -101,6 +102,16 @@ weights = [{ model = "geometric" }, { model = "lognormal", covariates = ["distan
     assert [c.model.information for c in found] == [Information.DENSITY] * 2 + [Information.DEGREES] * 2
 
 
+def test_the_form_of_a_negative_binomial_comes_from_the_study() -> None:
+    written = POISSON.replace('"P"', '"NB1"').replace('"poisson"', '"negative_binomial"\nform = 1')
+    plain = POISSON.replace('"poisson"', '"negative_binomial"')
+    models = [c.model for c in study(HEAD + plain + written).candidates]
+    assert models == [
+        NegativeBinomialModel(("origin_size", "distance"), form=2),
+        NegativeBinomialModel(("origin_size", "distance"), form=1),
+    ]
+
+
 # Each broken study, and the words that its one sentence must hold.
 BROKEN = {
     "no TOML": ("title = = 1", ["study.toml", "not valid TOML", "line 1"]),
@@ -125,6 +136,14 @@ BROKEN = {
     ),
     "no data": ((HEAD + POISSON).replace('dataset = "islands"', ""), ["dataset", "flows"]),
     "no candidates": (HEAD, ["candidates", "required"]),
+    "a form that there is not": (
+        HEAD + POISSON.replace('"poisson"', '"negative_binomial"\nform = 3'),
+        ["form of a negative binomial", "1", "2", "got 3"],
+    ),
+    "a form that is a word": (
+        HEAD + POISSON.replace('"poisson"', '"negative_binomial"\nform = "one"'),
+        ["'form'", "integer", "'one'"],
+    ),
     "unknown model": (
         HEAD + POISSON.replace('"poisson"', '"poison"'),
         ["candidates 1", "'P'", "poison", "'poisson'"],

@@ -18,6 +18,7 @@ from steelyard.benchmark.criteria import Criterion, Evidence, criterion_value
 from steelyard.benchmark.footing import Footing, Scope
 from steelyard.datasets import Floats
 from steelyard.models import ErrorKind, FlowDistribution, Measure
+from steelyard.models.binary_likelihoods import Probit
 from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import (
     DispersionForm,
@@ -29,13 +30,12 @@ from steelyard.models.distributions import (
     ZeroTruncatedLaw,
 )
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
-from steelyard.models.econometric.truncated_negative_binomial import fit_truncated_negative_binomial
 from steelyard.models.econometric.zero_inflated_fit import fit_zero_inflated
 from steelyard.models.effect_fit import EffectFit, fit_effects
 from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import Logit, LogNormal, Poisson
 from steelyard.models.node_effects import EffectEnds, NodeEffects
-from steelyard.models.probit_likelihood import Probit
+from steelyard.models.truncated_fit import TruncatedForm, fit_truncated_negative_binomial
 
 FORMS = {
     "negative_binomial": DispersionForm.QUADRATIC,
@@ -125,7 +125,8 @@ class Fit:
         if self.law == "probit":
             return LinkLaw.from_log_odds(log_ndtr(self.index) - log_ndtr(-self.index))
         if self.law == "truncated_negative_binomial":
-            return ZeroTruncatedLaw.of(np.exp(self.index), self.scale)
+            counts = NegativeBinomialLaw(np.exp(self.index), self.scale, DispersionForm.QUADRATIC)
+            return ZeroTruncatedLaw(counts)
         return LognormalLinkLaw(self.index, self.scale)
 
     @cached_property
@@ -231,7 +232,9 @@ def fitted(
     if law in FORMS:
         found = fit_negative_binomial(response, design, form=FORMS[law])
     elif law == "truncated_negative_binomial":
-        found = fit_truncated_negative_binomial(response, design)
+        truncated = fit_truncated_negative_binomial(response, design)
+        assert truncated.form is TruncatedForm.INSIDE
+        found = truncated.found
     elif law == "lognormal":
         found = fit_indices(LogNormal(response), [design, np.ones((len(response), 1))], pairs)
     else:
