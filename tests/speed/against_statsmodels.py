@@ -1,8 +1,9 @@
 """How fast the count models fit, against plain statsmodels calls:  python tests/speed/against_statsmodels.py [N]
 
 Both fit the same simulated dyads of N nodes (600: 359,400 dyads) one after the other in one run, and only ratios
-within the run mean anything. Ours is timed with all three kinds of standard errors, statsmodels with its default call.
-Log-likelihoods stand beside the times: a fast fit that stops short is no fit.
+within the run mean anything. Each is run three times and its least time counts (once, if that takes over ten
+seconds). Ours is timed with all three kinds of standard errors, statsmodels with its default call. Log-likelihoods
+stand beside the times: a fast fit that stops short is no fit.
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ import os
 import time
 import warnings
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 # One thread each, so that the ratio is one of work done.
 os.environ.setdefault("OMP_NUM_THREADS", "1")
@@ -30,10 +31,11 @@ from steelyard.models.covariance import NodePairs
 from steelyard.models.distributions import DispersionForm, NegativeBinomialLaw, PoissonLaw
 from steelyard.models.econometric.negative_binomial import fit_negative_binomial
 from steelyard.models.econometric.zero_inflated_fit import fit_zero_inflated
-from steelyard.models.index_likelihood import fit_indices
+from steelyard.models.index_likelihood import IndexFit, fit_indices
 from steelyard.models.likelihoods import Poisson
 
 SEED = 4_471
+RUNS, LONG = 3, 10.0
 WANTED = {"negative binomial": 3, "zero-inflated Poisson": 5, "zero-inflated negative binomial": 10}
 
 
@@ -79,23 +81,32 @@ class Network:
 
 
 def timed(work: Callable[[], tuple[float, bool]]) -> Timed:
-    start = time.perf_counter()
-    log_likelihood, converged = work()
-    return Timed(time.perf_counter() - start, log_likelihood, converged)
+    """The least time of three runs, or that of one long one."""
+    runs: list[Timed] = []
+    while len(runs) < RUNS and (not runs or runs[0].seconds < LONG):
+        start = time.perf_counter()
+        log_likelihood, converged = work()
+        runs.append(Timed(time.perf_counter() - start, log_likelihood, converged))
+    return min(runs, key=lambda run: run.seconds)
 
 
 def ours_plain(network: Network, counts: Floats, *, dispersed: bool) -> Timed:
-    """A count law without inflation; its full log-likelihood is worked out after the clock has stopped."""
-    start = time.perf_counter()
-    if dispersed:
-        found = fit_negative_binomial(counts, network.design, network.pairs)
-    else:
-        found = fit_indices(Poisson(counts), [network.design], network.pairs)
-    seconds = time.perf_counter() - start
+    """A count law without inflation; its full log-likelihood is worked out off the clock."""
+    fits: list[IndexFit] = []
+
+    def work() -> tuple[float, bool]:
+        if dispersed:
+            fits.append(fit_negative_binomial(counts, network.design, network.pairs))
+        else:
+            fits.append(fit_indices(Poisson(counts), [network.design], network.pairs))
+        return 0.0, fits[-1].convergence.converged
+
+    best = timed(work)
+    found = fits[-1]
     mean = np.exp(network.design @ found.coefficients[0])
     alpha = float(np.exp(found.coefficients[1][0])) if dispersed else 0.0
     law = NegativeBinomialLaw(mean, alpha, DispersionForm.QUADRATIC) if dispersed else PoissonLaw(mean)
-    return Timed(seconds, float(law.log_density(counts).sum()), found.convergence.converged)
+    return replace(best, log_likelihood=float(law.log_density(counts).sum()))
 
 
 def ours_inflated(network: Network, counts: Floats, *, dispersed: bool) -> Timed:
