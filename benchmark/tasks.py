@@ -250,7 +250,7 @@ def _estimate_rows(estimates: Estimates) -> Iterator[dict[str, Any]]:
                 "se_kind": kind.value,
                 "se": estimate.standard_errors[kind],
                 **asdict(found),
-                "note": note,
+                "note": estimate.note_for(kind) or note,
             }
         if not estimate.standard_errors:
             yield {

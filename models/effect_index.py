@@ -14,7 +14,6 @@ from steelyard.models.effect_errors import MOST_EFFECTS
 from steelyard.models.effect_fit import EffectFit
 from steelyard.models.effect_separation import Direction, Stage
 from steelyard.models.estimates import Estimate, EstimatePart, Estimates, Status
-from steelyard.models.linear_index import REPAIRED
 from steelyard.models.maximum_entropy.support import Support
 from steelyard.models.node_effects import NodeEffects
 
@@ -85,7 +84,7 @@ def _slope(fit: EffectFit, position: int, name: str, part: EstimatePart) -> Esti
         return Estimate(part, name, 0.0, {}, Status.FIXED, note=note)
     # A variance of zero may round to just below it.
     errors = {k: float(np.sqrt(np.maximum(m[position, position], 0.0))) for k, m in fit.covariances.items()}
-    return Estimate(part, name, float(fit.slopes[position]), errors, note=REPAIRED if fit.repaired else "")
+    return Estimate(part, name, float(fit.slopes[position]), errors, repaired=fit.repaired)
 
 
 def _effects(fit: EffectFit, labels: Sequence[str], part: EstimatePart) -> Iterator[Estimate]:

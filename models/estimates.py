@@ -11,6 +11,8 @@ from scipy.special import ndtr, ndtri
 
 __all__ = ["ErrorKind", "Estimate", "EstimatePart", "Estimates", "Interval", "Status"]
 
+REPAIRED = "variance repaired: negative eigenvalues clipped to zero"
+
 
 class EstimatePart(Enum):
     """The part of a law that a parameter belongs to."""
@@ -66,7 +68,8 @@ class Estimate:
     status : free, fixed, or at the boundary
     positive : a scale such as alpha or sigma: its interval is made on the log scale and it has no z test,
         since zero is the edge of its range
-    note : what a reader must know of this row ("same as origin_size", "variance repaired", ...)
+    note : what a reader must know of this row ("same as origin_size", ...)
+    repaired : kinds whose covariance had to be made positive semidefinite
     """
 
     part: EstimatePart
@@ -76,6 +79,12 @@ class Estimate:
     status: Status = Status.FREE
     positive: bool = False
     note: str = ""
+    repaired: frozenset[ErrorKind] = frozenset()
+
+    def note_for(self, kind: ErrorKind) -> str:
+        """The note, and for a kind of standard error whose covariance was repaired, that."""
+        mended = f"{kind.value.replace('_', '-')} {REPAIRED}" if kind in self.repaired else ""
+        return "; ".join(n for n in (self.note, mended) if n)
 
     def interval(self, kind: ErrorKind, level: float = 0.95) -> Interval:
         """Normal-theory z, two-sided p-value and interval with one kind of standard error."""

@@ -17,7 +17,6 @@ from steelyard.models.separation import MOVES
 
 __all__ = [
     "CONSTANT",
-    "REPAIRED",
     "LinearIndex",
     "alpha_estimate",
     "index_estimates",
@@ -28,7 +27,6 @@ __all__ = [
 ]
 
 CONSTANT = "constant"
-REPAIRED = "node-clustered variance repaired: negative eigenvalues clipped to zero"
 
 
 def node_pairs(dyads: Dyads) -> NodePairs:
@@ -117,7 +115,7 @@ def index_estimates(
         else:
             value = float(fit.coefficients[index][position])
             errors = _errors(fit, before + position, 1.0)
-            rows.append(Estimate(part, name, value, errors, note=_repair_note(fit)))
+            rows.append(Estimate(part, name, value, errors, repaired=fit.repaired))
     return Estimates(tuple(rows))
 
 
@@ -125,7 +123,7 @@ def scale_estimate(fit: IndexFit, index: int, name: str, part: EstimatePart) -> 
     """The row of a scale exp(constant) that is an index of its own; standard errors by the delta method."""
     position = sum(len(c) for c in fit.coefficients[:index])
     value = exp(float(fit.coefficients[index][0]))
-    return Estimate(part, name, value, _errors(fit, position, value), positive=True, note=_repair_note(fit))
+    return Estimate(part, name, value, _errors(fit, position, value), positive=True, repaired=fit.repaired)
 
 
 def alpha_estimate(fit: IndexFit, limit: str) -> Estimate:
@@ -153,7 +151,3 @@ def _errors(fit: IndexFit, position: int, factor: float) -> Mapping[ErrorKind, f
         kind: factor * float(np.sqrt(np.maximum(matrix[position, position], 0.0)))
         for kind, matrix in fit.covariances.items()
     }
-
-
-def _repair_note(fit: IndexFit) -> str:
-    return REPAIRED if fit.repaired else ""

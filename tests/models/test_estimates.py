@@ -204,13 +204,14 @@ def test_weights_models_refuse_a_network_without_links(model: GeometricModel) ->
 
 
 def test_a_repaired_variance_says_so() -> None:
-    """Some seeds give an indefinite node-clustered matrix: then every row of the fit carries the note."""
+    """Some seeds give an indefinite node-clustered matrix: then every row of the fit says so of that kind alone."""
     noted = 0
     for seed in range(12):
         found = PoissonModel(("x",)).fit(dyads_with(**example(seed)))
-        notes = {row.note for row in found.estimates}
+        assert {row.note_for(ErrorKind.MODEL) for row in found.estimates} == {""}
+        notes = {row.note_for(ErrorKind.NODE_CLUSTERED) for row in found.estimates}
         assert len(notes) == 1
-        noted += "repaired" in notes.pop()
+        noted += "node-clustered variance repaired" in notes.pop()
     assert 0 < noted < 12
 
 
