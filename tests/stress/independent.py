@@ -137,6 +137,10 @@ def best_found(
             value = -float(np.sum(terms)) if likelihood.amounts or not (terms > 1e-6).any() else np.inf
         return value if np.isfinite(value) else 1e300
 
+    bounds = [(-700.0, 700.0)] * len(starts[0])
+    if likelihood.scale:
+        # Below, scipy's negative binomial loses its digits; the Poisson laws are tried by themselves.
+        bounds[-1] = (-14.0, 30.0)
     best = -np.inf
     for start in starts:
         with np.errstate(all="ignore"):
@@ -144,7 +148,7 @@ def best_found(
                 minus,
                 start,
                 method="L-BFGS-B",
-                bounds=[(-700.0, 700.0)] * len(start),
+                bounds=bounds,
                 options={"maxiter": steps},
             )
         best = max(best, -float(found.fun), -minus(start))
