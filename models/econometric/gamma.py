@@ -10,14 +10,12 @@ import numpy as np
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
 from steelyard.models.distributions import GammaLinkLaw
-from steelyard.models.errors import ModelError
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.gamma_likelihood import Gamma
 from steelyard.models.index_likelihood import fit_indices
-from steelyard.models.likelihoods import least_squares
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
 from steelyard.models.measure import Measure
-from steelyard.models.observed_links import observed_links
+from steelyard.models.observed_links import observed_links, refuse_exact_flows
 
 __all__ = ["FittedGamma", "GammaModel"]
 
@@ -86,14 +84,8 @@ class GammaModel:
         """
         linked = observed_links(dyads)
         design = linked.design(self.covariates)
-        logs = np.log(linked.weights)
-        residual = logs - design @ least_squares(design, logs)
-        if float(np.abs(residual).max()) <= 1e-9 * max(1.0, float(np.abs(logs).max())):
-            raise ModelError(
-                f"the covariates explain all {len(logs)} positive flows exactly, so alpha is 0 and the gamma law "
-                "has no density; use fewer covariates"
-            )
-        found = fit_indices(Gamma(linked.weights), [design, np.ones((len(logs), 1))], node_pairs(linked))
+        refuse_exact_flows(linked.weights, design, "the gamma law", "alpha")
+        found = fit_indices(Gamma(linked.weights), [design, np.ones((len(linked), 1))], node_pairs(linked))
         alpha = scale_estimate(found, 1, "alpha", EstimatePart.DISPERSION)
         return FittedGamma(
             index=LinearIndex.of(found, self.covariates),

@@ -10,13 +10,12 @@ import numpy as np
 from steelyard.datasets import Dyads, Floats
 from steelyard.models.contract import Convergence, Family, Holdout, Information, Need, Part, Requirements
 from steelyard.models.distributions import LognormalLinkLaw
-from steelyard.models.errors import ModelError
 from steelyard.models.estimates import EstimatePart, Estimates
 from steelyard.models.index_likelihood import fit_indices
-from steelyard.models.likelihoods import LogNormal, least_squares
+from steelyard.models.likelihoods import LogNormal
 from steelyard.models.linear_index import LinearIndex, index_estimates, node_pairs, scale_estimate
 from steelyard.models.measure import Measure
-from steelyard.models.observed_links import observed_links
+from steelyard.models.observed_links import observed_links, refuse_exact_flows
 
 __all__ = ["FittedLognormal", "LognormalModel"]
 
@@ -82,14 +81,10 @@ class LognormalModel:
         """
         linked = observed_links(dyads)
         design = linked.design(self.covariates)
-        logs = np.log(linked.weights)
-        residual = logs - design @ least_squares(design, logs)
-        if float(np.abs(residual).max()) <= 1e-9 * max(1.0, float(np.abs(logs).max())):
-            raise ModelError(
-                f"the covariates explain all {len(logs)} positive flows exactly, so sigma is 0 and the lognormal "
-                "has no density; use fewer covariates"
-            )
-        found = fit_indices(LogNormal(linked.weights), [design, np.ones((len(logs), 1))], node_pairs(linked))
+        refuse_exact_flows(linked.weights, design, "the lognormal", "sigma")
+        found = fit_indices(
+            LogNormal(linked.weights), [design, np.ones((len(linked), 1))], node_pairs(linked)
+        )
         sigma = scale_estimate(found, 1, "sigma", EstimatePart.WEIGHTS)
         return FittedLognormal(
             index=LinearIndex.of(found, self.covariates),
