@@ -11,6 +11,7 @@ from textwrap import fill, indent
 from steelyard.benchmark.directory import RunDirectory
 from steelyard.benchmark.engine import run, study_tasks
 from steelyard.benchmark.facts import data_facts, method_sheet
+from steelyard.benchmark.options import option_meanings
 from steelyard.benchmark.study import Study, load_study, study_from_text
 from steelyard.datasets import BrokenPlugin, DataSet, dataset_registry
 from steelyard.models import ModelClass, Need, model_registry
@@ -126,6 +127,7 @@ def show_model(name: str) -> Answer:
         ("networks", " and ".join(sorted("directed" if d else "undirected" for d in model.directed))),
         ("beware", sheet.caution),
         ("sources", sheet.sources),
+        *((f"option {option}", meaning) for option, meaning in option_meanings(model)),
     )
     return DONE, "\n".join([f"{name} ({sheet.family}, {model.part.value})", *(_entry(*e) for e in entries)])
 

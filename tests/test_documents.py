@@ -40,10 +40,12 @@ def test_the_first_two_commands_do_their_own_set_up() -> None:
 
 
 def test_the_study_in_the_readme_is_a_valid_one(tmp_path: Path, capsys) -> None:
-    (study,) = blocks("README.md", "toml")
-    (tmp_path / "study.toml").write_text(study, encoding="utf-8")
-    assert main(["check", str(tmp_path / "study.toml")]) == 0
-    assert "fits in all" in capsys.readouterr().out
+    """Alone, and with the candidates of the second block, which are written to follow it."""
+    study, more = blocks("README.md", "toml")
+    for text in (study, study + more):
+        (tmp_path / "study.toml").write_text(text, encoding="utf-8")
+        assert main(["check", str(tmp_path / "study.toml")]) == 0
+        assert "fits in all" in capsys.readouterr().out
 
 
 def test_pictures_exist() -> None:
