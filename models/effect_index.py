@@ -123,7 +123,7 @@ def effect_convergence(fit: EffectFit, covariates: Sequence[str], labels: Sequen
     ]
     if edge:
         named = ", ".join(edge[:5]) + (" ..." if len(edge) > 5 else "")
-        said.append(f"{len(edge)} node effects at the boundary: {named}")
+        said.append(f"{len(edge)} node effect{'s' * (len(edge) > 1)} at the boundary: {named}")
     if fit.separated.any():
         terms = [
             name for k, name in enumerate(covariates) if any(d.slopes[k] != 0.0 for d in _directions(fit))

@@ -225,7 +225,9 @@ def _convergence(sample: _Sample, maximum: Maximum | None) -> Convergence:
     said = []
     if fixed:
         named = ", ".join(fixed[:5]) + (" ..." if len(fixed) > 5 else "")
-        said.append(f"{len(fixed)} node fitnesses at the boundary: {named}")
+        said.append(
+            f"{len(fixed)} node {'fitness' if len(fixed) == 1 else 'fitnesses'} at the boundary: {named}"
+        )
     if maximum is None:
         return Convergence(True, 0, 0.0, "; ".join(said))
     found = maximum.convergence

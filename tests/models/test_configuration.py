@@ -271,7 +271,7 @@ def test_a_wheel_solved_by_one_equation() -> None:
     assert found.estimates.row("node:n0").value == np.inf
     assert found.estimates.row("node:n0").status is Status.BOUNDARY
     assert found.n_parameters == m
-    assert "1 node fitnesses at the boundary: n0" in found.convergence.message
+    assert "1 node fitness at the boundary: n0" in found.convergence.message
 
 
 def test_two_degrees_against_a_root_finder() -> None:

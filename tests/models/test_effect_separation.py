@@ -146,7 +146,7 @@ def test_a_node_without_out_flow_is_at_the_boundary_and_named() -> None:
     assert row.note == "no flow on its training dyads: mean 0"
     assert fitted.n_parameters == 8 + 9 - 1 + 1
     assert fitted.convergence.converged
-    assert "1 node effects at the boundary: n2 as origin" in fitted.convergence.message
+    assert "1 node effect at the boundary: n2 as origin" in fitted.convergence.message
     assert "8 separated dyads fixed at mean 0" in fitted.convergence.message
     mean = fitted.expected_weight(dyads)
     assert (mean[dyads.origin == 2] == 0).all()
