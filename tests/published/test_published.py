@@ -80,6 +80,8 @@ QUANTITIES: Mapping[str, Callable[[Fit], Any]] = {
     "pearson_dispersion": lambda f: f.pearson_dispersion,
     "percent_correct": lambda f: 100 * np.mean((f.distribution.link_probability > 0.5) == (f.response == 1)),
     "pseudo_r_squared": lambda f: f.pseudo_r_squared,
+    # What quasi-likelihood errors multiply the model errors by.
+    "quasi_scale": lambda f: np.sqrt(f.pearson_dispersion),
     "r_squared": lambda f: f.r_squared,
     "theta": lambda f: 1 / f.scale,
 }
