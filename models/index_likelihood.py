@@ -18,12 +18,15 @@ from steelyard.models.covariance import Covariances, NodePairs, covariances
 from steelyard.models.design import ScaledDesign, scaled_design
 from steelyard.models.errors import ModelError
 from steelyard.models.estimates import ErrorKind
-from steelyard.models.index_objective import IndexObjective, good_start
+from steelyard.models.index_objective import SAMPLE_FROM, IndexObjective, good_start
 from steelyard.models.index_protocol import Edges, IndexDerivatives, IndexLikelihood
 from steelyard.models.separation import MOVES, separating_direction
-from steelyard.models.solvers import Maximum, newton_maximise
+from steelyard.models.solvers import NEGLIGIBLE, Maximum, newton_maximise
 
 __all__ = ["Edges", "IndexDerivatives", "IndexFit", "IndexLikelihood", "fit_indices"]
+
+# With many observations a step of 1e-8 standard errors costs more than it is worth.
+NEGLIGIBLE_ON_MANY = 1e-16
 
 
 @dataclass(frozen=True, eq=False)
@@ -109,7 +112,8 @@ def _maximum_or_direction(
     _refuse_too_few(len(scaled[0].matrix), scaled)
     matrices = [s.matrix for s in scaled]
     objective = IndexObjective.of(likelihood, matrices)
-    maximum = newton_maximise(objective, good_start(likelihood, matrices))
+    negligible = NEGLIGIBLE_ON_MANY if len(matrices[0]) >= SAMPLE_FROM else NEGLIGIBLE
+    maximum = newton_maximise(objective, good_start(likelihood, matrices), negligible=negligible)
     # A separated search may also end with an information matrix that has rounded to singular, so that nothing
     # seems to move any more: every uncertified end is asked about.
     if not maximum.convergence.converged:

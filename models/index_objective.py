@@ -12,7 +12,7 @@ from steelyard.datasets.arrays import Floats, Integers
 from steelyard.models.index_protocol import IndexDerivatives, IndexLikelihood
 from steelyard.models.solvers import Slope, newton_maximise
 
-__all__ = ["IndexObjective", "even_rows", "good_start"]
+__all__ = ["SAMPLE_FROM", "IndexObjective", "even_rows", "good_start"]
 
 # A block's arrays stay in the processor's cache, and no array of the size of the data is made on the way.
 ROWS_IN_A_BLOCK = 2**16

@@ -11,12 +11,14 @@ from scipy.linalg import cho_factor, cho_solve, cholesky, eigh
 from steelyard.datasets.arrays import Floats
 from steelyard.models.contract import Convergence
 
-__all__ = ["Maximum", "Objective", "Slope", "newton_maximise"]
+__all__ = ["NEGLIGIBLE", "Maximum", "Objective", "Slope", "newton_maximise"]
 
 RESIDUAL_LIMIT = 1e-8
 DECREMENT_LIMIT = 1e-10
 # The square of a distance in standard errors: a step of 1e-12 of them is not worth an evaluation.
 NEGLIGIBLE = 1e-24
+# A decrement of 0.01 is a tenth of a standard error from the top.
+NEAR = 1e-2
 # Under separation each Newton step moves some linear index by about 1 for ever; at a true maximum the steps
 # shrink quadratically. So the size of the last step, in index units, tells the two apart.
 MOVEMENT_LIMIT = 1e-6
@@ -60,7 +62,9 @@ class Maximum:
     convergence: Convergence
 
 
-def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> Maximum:
+def newton_maximise(
+    objective: Objective, start: Floats, *, most: int = 100, negligible: float = NEGLIGIBLE
+) -> Maximum:
     """Newton's method with backtracking; curvature that is not concave is mended by its absolute eigenvalues.
 
     Parameters
@@ -68,12 +72,14 @@ def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> 
     objective : the function
     start : (k,) a point where the function is finite
     most : largest number of steps
+    negligible : decrement from which on no step is worth an evaluation
 
     Returns
     -------
     Maximum, whose convergence was worked out at the last point from gradient and information alone.
     """
-    point, value = start, objective.value(start)
+    point = start
+    value: float | None = None  # worked out when it is asked for
     slope = objective.slope(point)
     iterations = 0
     stalled = False
@@ -81,18 +87,36 @@ def newton_maximise(objective: Objective, start: Floats, *, most: int = 100) -> 
     while iterations < most and not stalled:
         step = _ascent_step(slope)
         decrement = float(slope.gradient @ step)
-        if iterations and 0 <= decrement <= NEGLIGIBLE and objective.movement(step) <= MOVEMENT_LIMIT:
+        if iterations and 0 <= decrement <= negligible and objective.movement(step) <= MOVEMENT_LIMIT:
             break
         iterations += 1
-        length, gained = _step_length(objective, point, step, value, decrement)
-        stalled = length == 0.0
-        if not stalled:
-            point, value = point + length * step, gained
-            slope = objective.slope(point)
+        beyond = _slope_beyond(objective, point, step, decrement)
+        if beyond is not None:
+            point, slope, value = point + step, beyond, None
+        else:
+            value = objective.value(point) if value is None else value
+            length, value = _step_length(objective, point, step, value, decrement)
+            stalled = length == 0.0
+            if not stalled:
+                point = point + length * step
+                slope = objective.slope(point)
         if decrement <= DECREMENT_LIMIT**1.2 and objective.movement(step) <= MOVEMENT_LIMIT:
             break
     movement = objective.movement(step) if iterations else np.inf
+    value = objective.value(point) if value is None else value
     return _certified(point, value, slope, iterations, movement)
+
+
+def _slope_beyond(objective: Objective, point: Floats, step: Floats, decrement: float) -> Slope | None:
+    """The slope after a whole step, where it shows by itself that the step has reached the top of its line.
+
+    That is asked only close to a maximum, where the function is all but quadratic; it saves the value.
+    """
+    if not DECREMENT_LIMIT**1.2 <= decrement <= NEAR:
+        return None
+    slope = objective.slope(point + step)
+    finite = np.isfinite(slope.gradient).all() and np.isfinite(slope.information).all()
+    return slope if finite and abs(float(slope.gradient @ step)) <= 0.1 * decrement else None
 
 
 def _ascent_step(slope: Slope) -> Floats:

@@ -26,7 +26,7 @@ from steelyard.models.linear_index import (
 )
 from steelyard.models.measure import Measure
 from steelyard.models.negative_binomial_linear import NegativeBinomialLinear
-from steelyard.models.special import negative_binomial_log_mass, poisson_log_mass
+from steelyard.models.special import log_one_plus, negative_binomial_log_mass, poisson_log_mass
 
 __all__ = ["FittedNegativeBinomial", "NegativeBinomialModel", "fit_negative_binomial"]
 
@@ -128,7 +128,8 @@ def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, for
         return False
     index = design @ found.coefficients[0]
     mean = np.exp(index)
-    columns = design[:, [i for i in range(design.shape[1]) if i not in found.aliased[0]]]
+    kept = [i for i in range(design.shape[1]) if i not in found.aliased[0]]
+    columns = design if len(kept) == design.shape[1] else design[:, kept]
     scale = np.abs(columns).max(axis=0)
     information = (columns.T * mean) @ columns / np.outer(scale, scale)
     try:
@@ -138,9 +139,13 @@ def _surely_above_poisson(found: IndexFit, response: Floats, design: Floats, for
     moved = mean * (1.0 + columns @ step)
     if not (moved > 0).all():
         return False
-    bound = float(moved @ np.log(moved) - moved.sum() - gammaln(response + 1.0).sum())
-    reached = _likelihood(response, form).value([index, np.full_like(index, found.coefficients[1][0])])
-    rounding = 1e-10 * float(response @ (1.0 + np.log(np.maximum(response, 1.0)))) + 1e-9 * abs(reached)
+    # Both sides without their common terms -log w!; the rounding of large weights is allowed for below.
+    bound = float(moved @ np.log(moved) - moved.sum())
+    alpha = float(np.exp(found.coefficients[1][0]))
+    size = 1.0 / alpha if form is DispersionForm.QUADRATIC else mean / alpha
+    gained = gammaln(response + size) - gammaln(size) - (response + size) * log_one_plus(mean / size)
+    reached = float(gained.sum() + response @ index - (response * np.log(size)).sum())
+    rounding = 1e-10 * float(response @ (1.0 + np.abs(index))) + 1e-9 * abs(reached)
     off = float(np.abs(columns.T @ (response - moved) / scale).max()) / max(1.0, float(response.sum()))
     return off < 1e-12 and bound + 1.0 + rounding < reached
 
