@@ -138,7 +138,8 @@ def set_title(figure: Figure, finding: str, subtitle: str) -> float:
 def arrange(figure: Figure, panels: Sequence[Sequence[Axes]], *, top: float, bottom: float) -> None:
     """Place panels beside each other, each as wide as the labels around them leave room for.
 
-    Matplotlib's own layout engines would measure everything again for each file; this measures once.
+    Matplotlib's own layout engines would measure everything again for each file; this measures twice, since a
+    note inside the axes may stand out of them once they have shrunk.
 
     Parameters
     ----------
@@ -146,6 +147,11 @@ def arrange(figure: Figure, panels: Sequence[Sequence[Axes]], *, top: float, bot
     panels : left to right; axes that lie on each other (twins) form one panel
     top, bottom : inches kept for title and legend
     """
+    for _ in range(2):
+        _place(figure, panels, top=top, bottom=bottom)
+
+
+def _place(figure: Figure, panels: Sequence[Sequence[Axes]], *, top: float, bottom: float) -> None:
     width, height = figure.get_size_inches()
     margins = [[_overhang(axes, figure.dpi) for axes in panel] for panel in panels]
     left, low, right, high = (

@@ -15,7 +15,8 @@ from steelyard.reports.wording import short_labels
 
 __all__ = ["DotPanel", "draw_dots", "draw_marker", "scale_limits"]
 
-# A value is off the scale when it lies further from the best than this many times the median does.
+# A value is off the scale when it lies further from the best than this many times the median does, or than this
+# many times the range of the best candidate's folds: many near-ties at the top must not push out the rest.
 _REACH = 6.0
 
 
@@ -30,22 +31,18 @@ class DotPanel:
 def scale_limits(scores: list[PooledScore]) -> tuple[float, float]:
     """Lowest and highest value that the scale shows.
 
-    Few candidates far behind the rest would squeeze the rest into one line, so at most a quarter of the
-    candidates may fall off the scale, on the worse side.
+    Candidates far behind would squeeze the rest into one line, so they may fall off the scale, on the worse
+    side. More than half of the candidates always stay on it, since the median does.
     """
     finite = [item for item in scores if math.isfinite(item.value)]
     if not finite:
         return (0.0, 1.0)
     sign = -1.0 if finite[0].better == "higher" else 1.0
     values = [sign * item.value for item in finite]
-    best = min(values)
-    limit = best + _REACH * (statistics.median(values) - best)
-    off = [value for value in values if value > limit]
-    kept = (
-        finite
-        if limit <= best or len(off) > len(finite) / 4
-        else [i for i in finite if sign * i.value <= limit]
-    )
+    first = min(finite, key=lambda item: sign * item.value)
+    best = sign * first.value
+    reach = max(statistics.median(values) - best, first.highest - first.lowest)
+    kept = [item for item in finite if sign * item.value <= best + _REACH * reach] if reach > 0 else finite
     ends = [end for item in kept for end in (item.lowest, item.highest) if math.isfinite(end)]
     low, high = min(ends), max(ends)
     room = 0.04 * (high - low) or 0.05 * abs(high) or 1.0

@@ -1,6 +1,7 @@
 """Figures: equal bytes, legible labels, inert text."""
 
 import itertools
+import math
 import re
 import xml.etree.ElementTree as ElementTree
 
@@ -9,8 +10,9 @@ import pytest
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 
 from steelyard.reports import build_document
-from steelyard.reports.canvas import FigureFormat
-from steelyard.reports.dots import scale_limits
+from steelyard.reports.canvas import FigureFormat, arrange, blank_figure, drawing_style
+from steelyard.reports.comparing import Entry
+from steelyard.reports.dots import DotPanel, draw_dots, scale_limits
 from steelyard.reports.frames import ScoreRow
 from steelyard.reports.inline_svg import inline_svg
 from steelyard.reports.palette import OBSERVED, family_mark
@@ -111,6 +113,30 @@ def test_labels_do_not_overlap_and_stay_on_the_page(many_tables, facts, number):
             assert all(text.get_fontsize() >= 8 for text in labels)
 
 
+def test_a_note_beyond_the_rule_stays_on_the_page():
+    rows = [
+        ScoreRow("f", f"A candidate with a long label {c}", "dyads", 0, 0, "log_score", "lower", value, 9, n)
+        for c, value, n in (("a", 1.0, 0), ("b", 1.2, 0), ("c", math.inf, 1234))
+    ]
+    nan = math.nan
+    panel = DotPanel(
+        "log score",
+        tuple(
+            (Entry(s.candidate, "mixed", "", "", "", nan, None, nan, nan, nan, None, s), s)
+            for s in pool_scores(rows)
+        ),
+    )
+    with drawing_style():
+        figure = blank_figure(3.0)
+        axes = figure.subplots()
+        draw_dots(axes, panel, show_names=True, ticks=5)
+        arrange(figure, [[axes]], top=0.5, bottom=0.3)
+        FigureCanvasAgg(figure).draw()
+    boxes = [note.get_window_extent() for note in axes.texts]
+    assert boxes
+    assert all(box.x0 >= 0 and box.x1 <= figure.bbox.x1 for box in boxes)
+
+
 def test_black_is_kept_for_the_observed_network(drawn):
     for drawing in drawn.values():
         for use in ("fill", "stroke"):
@@ -128,8 +154,20 @@ def test_one_far_candidate_leaves_the_scale_to_the_rest():
     assert 1.3 < high < 1.5
 
 
-def test_many_far_candidates_stay_on_the_scale():
-    assert scale_limits(pooled(1.0, 1.0, 1.1, 50.0, 60.0))[1] > 60
+def test_more_than_half_of_the_candidates_stay_on_the_scale():
+    assert scale_limits(pooled(1.0, 1.1, 50.0, 60.0))[1] > 60
+    assert scale_limits(pooled(1.0, 1.1, 1.2, 50.0, 60.0))[1] < 2
+
+
+def test_near_ties_at_the_top_do_not_push_out_what_the_folds_of_the_best_cover():
+    rows = [
+        ScoreRow("f", f"c{index}", "dyads", 0, fold, "log_score", "lower", value + 0.03 * fold, 5, 0)
+        for index, value in enumerate((0.4578, 0.4585, 0.4585, 0.4585, 0.6, 126.0))
+        for fold in (0, 1)
+    ]
+    low, high = scale_limits(list(pool_scores(rows)))
+    assert low < 0.4578
+    assert 0.63 < high < 1
 
 
 def test_equal_values_have_a_scale():
