@@ -73,9 +73,9 @@ def _table(name: str, caption: str, rows: Sequence[EstimateRow], notes: tuple[st
             Column(f"{kind}_se", f"SE, {words}", CellKind.SIGNIFICANT, 3),
             Column(f"{kind}_p", f"p, {words}", CellKind.P_VALUE, 3),
         ]
-    remarks: dict[tuple[str, str], dict[str, None]] = {(row.part, row.term): {} for row in rows}
-    for noting in rows:
-        remarks[noting.part, noting.term] |= {noting.note: None} if noting.note else {}
+    remarks, shared = _remarks(rows)
+    if shared:
+        notes = (f"All rows: {shared}.", *notes)
     noted = any(remarks.values())
     if noted:
         columns.append(Column("note", "Note", CellKind.TEXT))
@@ -88,6 +88,18 @@ def _table(name: str, caption: str, rows: Sequence[EstimateRow], notes: tuple[st
             row = by_kind.get((part, term, kind))
             cells += [row.se, row.p_value] if row else [None, None]
         if noted:
-            cells.append("; ".join(remarks[part, term]))
+            cells.append(remarks[part, term])
         lines.append(tuple(cells))
     return Table(name, caption, tuple(columns), tuple(lines), notes)
+
+
+def _remarks(rows: Sequence[EstimateRow]) -> tuple[dict[tuple[str, str], str], str]:
+    """The remark on each part and term, and apart from them the one that all of several share."""
+    found: dict[tuple[str, str], dict[str, None]] = {(row.part, row.term): {} for row in rows}
+    for row in rows:
+        found[row.part, row.term] |= {row.note: None} if row.note else {}
+    texts = {key: "; ".join(notes) for key, notes in found.items()}
+    said = set(texts.values())
+    if len(texts) > 1 and len(said) == 1:
+        return dict.fromkeys(texts, ""), said.pop()
+    return texts, ""

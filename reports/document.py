@@ -84,7 +84,7 @@ def build_document(tables: Mapping[str, pd.DataFrame], facts: ReportFacts) -> Do
     ranked = [key for key, comparison in zip(keys, comparisons, strict=True) if not comparison.is_alone]
     return Document(
         facts=facts,
-        compared=compared_sentences(run.candidates),
+        compared=compared_sentences(run.candidates, run.outcomes),
         answers=tuple(zip(ranked, answers(comparisons, pooled), strict=True)),
         alone=alone_sentence(comparisons),
         sections=tuple(

@@ -12,8 +12,12 @@ __all__ = ["side_by_side_tables"]
 
 # The first kind that a candidate has is shown; the others stand in its own table.
 _PREFERRED = ("node_clustered", "robust", "model")
-# Dispersion and inflation belong to joint laws and stand below their slopes.
-_GROUPS = (("links", ("links",)), ("weights", ("weights",)), ("joint", ("joint", "inflation", "dispersion")))
+# Inflation and dispersion stand below the slopes of the law that they belong to.
+_GROUPS = (
+    ("links", ("links",)),
+    ("weights", ("weights", "dispersion")),
+    ("joint", ("joint", "inflation", "dispersion")),
+)
 _CAPTIONS = {
     "links": "Which links exist",
     "weights": "How heavy a given link is",
@@ -31,11 +35,19 @@ def side_by_side_tables(
     """
     names = [row.candidate for row in candidates]
     names += [name for name in dict.fromkeys(row.candidate for row in estimates) if name not in names]
+    # A dispersion belongs to the law of weights where the candidate has one, else to its joint law.
+    weighing = {row.candidate for row in estimates if row.part == "weights"}
     known = {part for _, parts in _GROUPS for part in parts}
     others = dict.fromkeys(row.part for row in estimates if row.part not in known)
     tables = []
     for group, parts in (*_GROUPS, *((part, (part,)) for part in others)):
-        chosen = [row for row in estimates if row.part in parts and not row.is_node]
+        chosen = [
+            row
+            for row in estimates
+            if row.part in parts
+            and not row.is_node
+            and (row.part != "dispersion" or (group == "weights") == (row.candidate in weighing))
+        ]
         by_candidate = {
             name: _chosen_kind([row for row in chosen if row.candidate == name]) for name in names
         }

@@ -14,8 +14,20 @@ __all__ = ["caution_sentences", "compared_sentences", "outcome_sentence"]
 _OUTCOMES = {"failed": "failed", "not_applicable": "not applicable"}
 
 
-def compared_sentences(candidates: Sequence[CandidateRow]) -> tuple[str, ...]:
-    """How many candidates of which families, on how many nodes, dyads and links, at what density."""
+def compared_sentences(
+    candidates: Sequence[CandidateRow], outcomes: Sequence[OutcomeRow] = ()
+) -> tuple[str, ...]:
+    """How many candidates of which families, on how many nodes, dyads and links, at what density.
+
+    A candidate that has outcomes and no row of its own was not fitted to all dyads; it is named.
+    """
+    fitted = {row.candidate for row in candidates}
+    unfitted = [name for name in dict.fromkeys(row.candidate for row in outcomes) if name not in fitted]
+    left_out = (f"Not fitted to all dyads: {label_list(unfitted, 6)}.",) if unfitted and fitted else ()
+    return (*_compared(candidates), *left_out)
+
+
+def _compared(candidates: Sequence[CandidateRow]) -> tuple[str, ...]:
     if not candidates:
         return ("No candidate was compared.",)
     families = dict.fromkeys(row.family or "unstated" for row in candidates)

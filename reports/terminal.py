@@ -45,7 +45,7 @@ def terminal_summary(tables: Mapping[str, pd.DataFrame], facts: ReportFacts) -> 
     lines += [_answer_line(answer, name_scheme=several) for answer in found]
     lines += impossible_overall(comparisons)
     lines.append(alone_sentence(comparisons))
-    lines += compared_sentences(run.candidates)
+    lines += compared_sentences(run.candidates, run.outcomes)
     warnings = warning_table(run.candidates, run.outcomes, pooled, facts)
     told = f"{count(len(warnings.rows), 'warning')} in the report." if warnings.rows else "No warning."
     lines.append(f"{outcome_sentence(run.outcomes)} {told}".strip())

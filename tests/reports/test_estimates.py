@@ -42,6 +42,30 @@ def test_terms_in_rows_candidates_in_columns_parts_apart():
     assert [row[0] for row in joint.rows] == ["distance", "alpha"]
 
 
+def test_a_dispersion_stands_with_the_law_it_belongs_to():
+    rows = rows_of(
+        ("Hurdle", "weights", "distance", -2.0, "model", 0.125, ""),
+        ("Hurdle", "dispersion", "alpha", 1.5, "model", 0.25, ""),
+        ("Joint", "joint", "distance", -1.0, "model", 1.0, ""),
+        ("Joint", "dispersion", "alpha", 3.0, "model", 1.0, ""),
+    )
+    weights, joint = side_by_side_tables((), rows)
+    assert weights.grid().titles == ("Term", "Hurdle")
+    assert [row[0] for row in weights.rows] == ["distance", "alpha"]
+    assert joint.grid().titles == ("Term", "Joint")
+    assert [row[0] for row in joint.rows] == ["distance", "alpha"]
+
+
+def test_a_note_on_every_row_is_said_once():
+    rows = rows_of(
+        ("A", "joint", "distance", -2.0, "model", 0.125, "variance repaired"),
+        ("A", "joint", "size", 1.5, "model", 0.25, "variance repaired"),
+    )
+    (found,) = candidate_estimates((), rows)
+    assert "note" not in [column.name for column in found.coefficients.columns]
+    assert found.coefficients.notes[0] == "All rows: variance repaired."
+
+
 def test_candidates_that_share_a_part_share_a_column():
     rows = rows_of(
         ("A", "weights", "distance", -1.5, "model", 0.5, ""),

@@ -33,6 +33,12 @@ def test_what_was_compared(three_tables, empty_tables):
     assert compared_sentences(read_tables(empty_tables).candidates) == ("No candidate was compared.",)
 
 
+def test_a_candidate_without_a_fit_is_named(three_tables):
+    three_tables["candidates"] = three_tables["candidates"].iloc[[0, 2]]
+    run = read_tables(three_tables)
+    assert compared_sentences(run.candidates, run.outcomes)[1:] == ("Not fitted to all dyads: Birch.",)
+
+
 def test_other_dyads_are_named_as_such(three_tables):
     three_tables["candidates"].loc[2, "n_dyads"] = 10
     assert compared_sentences(read_tables(three_tables).candidates) == (
